@@ -101,9 +101,9 @@ def _count_by_split(n: int) -> tuple[int, ...]:
 def _structures(n: int, m: int) -> NDArray[np.int8]:
     """List what one phase can do with the plates: set partitions of the ``2n`` plates.
 
-    Block 0 is the merged port, blocks 1 to `m` (at least one) are internal nodes, numbered in the order in which the plates
-    meet them (so that each set of unnamed nodes comes once). No internal node holds both plates of a
-    capacitor, and every vertex holds at least two plates.
+    Block 0 is the merged port, blocks 1 to `m` (at least one) are internal nodes, numbered in the order in
+    which the plates meet them, so that each set of unnamed nodes comes once. No internal node holds both
+    plates of a capacitor, and every vertex holds at least two plates.
 
     Returns
     -------
