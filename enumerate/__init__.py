@@ -1,0 +1,1 @@
+"""Which converters exist: wiring, exact balance, families and the complete census."""

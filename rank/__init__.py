@@ -1,0 +1,1 @@
+"""Which converters are worth building: charge flow, sizing, ranking and the shortlist."""
