@@ -1,0 +1,245 @@
+"""The families that the trade knows by name, at any size, built from their definition.
+
+Every builder returns one wiring in its usual step-up (or tap) role; the other roles follow from its cell. The
+ratio that the definition promises is asserted by the exact analysis.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from fractions import Fraction
+from functools import lru_cache
+from itertools import count
+from typing import TYPE_CHECKING, TypeAlias
+
+from capmuster.enumerate.errors import CapmusterError
+from capmuster.enumerate.wiring import Cell, Converter
+
+if TYPE_CHECKING:
+    from collections.abc import Callable, Iterator
+
+_Plates: TypeAlias = tuple[str, str, str, str]
+
+
+@dataclass(frozen=True, slots=True)
+class Member:
+    """One converter of a family.
+
+    Attributes
+    ----------
+    family
+        Name of the family.
+    size
+        What the family is counted by: the ladder's and Dickson's and series-parallel's N, the number of
+        stages of the others.
+    detail
+        What tells members of one size apart, such as a ladder's tap, and what was left out and why.
+    converter
+        The converter.
+    """
+
+    family: str
+    size: int
+    detail: str
+    converter: Converter
+
+
+def _code(words: list[_Plates]) -> str:
+    return " ".join(f"{a}-{b}/{c}-{d}" for a, b, c, d in words)
+
+
+def _built(words: list[_Plates], ratio: Fraction, family: str) -> Converter:
+    converter = Converter.parse(_code(words))
+    if converter.ratio != ratio:
+        raise AssertionError(f"{family}: built {converter.code} with ratio {converter.ratio}, wanted {ratio}")
+    return converter
+
+
+def series_parallel(n: int) -> Converter:
+    """Step up by ``n``: n - 1 capacitors charged side by side from the input, then stacked upon it.
+
+    Raises
+    ------
+    CapmusterError
+        When ``n`` is below 2.
+    """
+    _check_size("series-parallel", n, least=2)
+    levels = ["I", *(f"x{k}" for k in range(1, n - 1)), "O"]
+    words = [("I", "G", levels[k + 1], levels[k]) for k in range(n - 1)]
+    return _built(words, Fraction(n), "series-parallel")
+
+
+def ladder(n: int, tap: int = 1) -> Converter:
+    """Step down to ``tap / n``: ``n`` rails one step apart, n - 1 flying capacitors that move up and down a step.
+
+    A rail capacitor holds each step between two rails, in both phases. The stiff ports G, O and I hold the rails
+    0, ``tap`` and ``n``, so a full column of rail capacitors between two ports would close a loop whose charge no
+    law fixes: in each column the outermost one (next to G, and next to I) is left out, which leaves n - 2. The
+    flying capacitor at that end then feeds the port directly.
+
+    Raises
+    ------
+    CapmusterError
+        When ``n`` is below 2, or the tap is not inside the ladder.
+    """
+    _check_size("ladder", n, least=2)
+    if not 1 <= tap <= n - 1:
+        raise CapmusterError(f"ladder: tap {tap} is outside a ladder of {n} steps", accepted=f"1 to {n - 1}")
+    ports = {0: "G", tap: "O", n: "I"}
+    rails = [ports.get(level, f"x{level}") for level in range(n + 1)]
+    words = [(rails[k + 1], rails[k], rails[k + 2], rails[k + 1]) for k in range(n - 1)]
+    held = [*range(1, tap), *range(tap, n - 1)]
+    words += [(rails[k + 1], rails[k], rails[k + 1], rails[k]) for k in held]
+    return _built(words, Fraction(tap, n), "ladder")
+
+
+def dickson(n: int) -> Converter:
+    """Step up by ``n``: n - 1 capacitors in a chain, each charged by the one before, bottoms driven alternately.
+
+    Raises
+    ------
+    CapmusterError
+        When ``n`` is below 2.
+    """
+    _check_size("Dickson", n, least=2)
+    words = []
+    for k in range(1, n):
+        low = ("I" if k == 1 else f"x{k - 1}", "G")
+        high = ("O" if k == n - 1 else f"x{k}", "I")
+        words.append((*low, *high) if k % 2 else (*high, *low))
+    return _built(words, Fraction(n), "Dickson")
+
+
+def fibonacci(stages: int) -> Converter:
+    """Step up by the Fibonacci number F(stages + 1) of 1, 2, 3, 5, ...: each capacitor is lifted by the one before.
+
+    Raises
+    ------
+    CapmusterError
+        When ``stages`` is below 1.
+    """
+    _check_size("Fibonacci", stages, least=1)
+    before, number = 1, 2
+    for _ in range(stages - 1):
+        before, number = number, before + number
+    words = []
+    for k in range(1, stages + 1):
+        # While k charges from ground, k - 1 is lifted, and their tops meet at y(k-1); k + 1 is lifted by k's top.
+        low = ("I" if k == 1 else f"y{k - 1}", "G")
+        high = ("O" if k == stages else f"y{k}", "I" if k == 1 else f"y{k - 2}" if k > 2 else "I")
+        words.append((*low, *high) if k % 2 else (*high, *low))
+    return _built(words, Fraction(number), "Fibonacci")
+
+
+def doubler_chain(stages: int, *, alternate: bool = False) -> Converter:
+    """Step up by 2^stages: doublers in a row, with a capacitor from each rail between them to ground.
+
+    All stages charge in the same phase; with ``alternate`` every other stage charges in the other phase.
+
+    Raises
+    ------
+    CapmusterError
+        When ``stages`` is below 1.
+    """
+    _check_size("doubler chain", stages, least=1)
+    rails = ["I", *(f"x{k}" for k in range(1, stages)), "O"]
+    words: list[_Plates] = []
+    for k in range(stages):
+        low, high = (rails[k], "G"), (rails[k + 1], rails[k])
+        words.append((*high, *low) if alternate and k % 2 else (*low, *high))
+    words += [(rail, "G", rail, "G") for rail in rails[1:-1]]
+    return _built(words, Fraction(2**stages), "doubler chain")
+
+
+def _check_size(family: str, size: int, *, least: int) -> None:
+    if size < least:
+        raise CapmusterError(f"{family}: size {size} is too small", accepted=f"{least} or more")
+
+
+@dataclass(frozen=True, slots=True)
+class _Family:
+    name: str
+    sizes: Callable[[int], Iterator[tuple[int, str, Converter]]]
+
+
+def _series_parallels(most: int) -> Iterator[tuple[int, str, Converter]]:
+    for n in range(2, most + 2):
+        yield n, f"N = {n}", series_parallel(n)
+
+
+def _ladders(most: int) -> Iterator[tuple[int, str, Converter]]:
+    for n in count(2):
+        if 2 * n - 3 > most:
+            return
+        for tap in range(1, n // 2 + 1):  # upside down, tap k is tap n - k
+            ends = (tap > 1) + (n - tap > 1)
+            which = ("", "; the rail capacitor at one end is", "; the rail capacitors at both ends are")[ends]
+            note = f"{which} left out: redundant between two stiff ports" if ends else ""
+            yield n, f"N = {n}, tap {tap}{note}", ladder(n, tap)
+
+
+def _dicksons(most: int) -> Iterator[tuple[int, str, Converter]]:
+    for n in range(2, most + 2):
+        yield n, f"N = {n}", dickson(n)
+
+
+def _fibonaccis(most: int) -> Iterator[tuple[int, str, Converter]]:
+    for stages in range(1, most + 1):
+        yield stages, f"{stages} stages", fibonacci(stages)
+
+
+def _doubler_chains(most: int, *, alternate: bool = False) -> Iterator[tuple[int, str, Converter]]:
+    for stages in range(2 if alternate else 1, (most + 1) // 2 + 1):
+        yield stages, f"{stages} stages", doubler_chain(stages, alternate=alternate)
+
+
+_FAMILIES = (
+    _Family("series-parallel", _series_parallels),
+    _Family("ladder", _ladders),
+    _Family("Dickson", _dicksons),
+    _Family("Fibonacci", _fibonaccis),
+    _Family("doubler chain", _doubler_chains),
+    _Family("alternating doubler chain", lambda most: _doubler_chains(most, alternate=True)),
+)
+FAMILY_NAMES = tuple(family.name for family in _FAMILIES)
+"""Names of the families, in the order in which a converter lists them."""
+
+
+@lru_cache(maxsize=8)
+def members(most_capacitors: int) -> tuple[Member, ...]:
+    """Every family member with at most so many flying capacitors, in every role, each family's members once.
+
+    A converter that belongs to two families appears under each of them.
+    """
+    found = []
+    for family in _FAMILIES:
+        seen: set[Converter] = set()
+        for size, detail, base in family.sizes(most_capacitors):
+            for converter in Cell.of(base.words).converters:
+                if converter not in seen:
+                    seen.add(converter)
+                    found.append(Member(family.name, size, detail, converter))
+    return tuple(found)
+
+
+@lru_cache(maxsize=8)
+def family_names(most_capacitors: int) -> dict[str, tuple[str, ...]]:
+    """Names of the families of each member, by its id."""
+    names: dict[str, list[str]] = {}
+    for member in members(most_capacitors):
+        names.setdefault(member.converter.id, []).append(member.family)
+    return {converter_id: tuple(listed) for converter_id, listed in names.items()}
+
+
+def check_family(name: str) -> str:
+    """Return the family's name as it is written here.
+
+    Raises
+    ------
+    CapmusterError
+        When there is no such family.
+    """
+    for known in FAMILY_NAMES:
+        if known.casefold() == name.strip().casefold():
+            return known
+    raise CapmusterError(f"family: '{name}' is unknown", accepted=", ".join(FAMILY_NAMES))
