@@ -46,7 +46,7 @@ def extremes(rest: npt.ArrayLike, terms: Array, rates: Array, duration: float) -
     tuple of Array
         Least and greatest values, shape (...).
     """
-    rest = np.asarray(rest, dtype=float)
+    rest = np.broadcast_to(np.asarray(rest, dtype=float), terms.shape[:-1])
     at_start = rest + terms.sum(axis=-1)
     at_end = rest + terms @ np.exp(-rates * duration)
     low, high = np.minimum(at_start, at_end), np.maximum(at_start, at_end)
