@@ -8,7 +8,7 @@ its columns sorted by their potential.
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, Protocol
+from typing import TYPE_CHECKING, Protocol, TypeAlias, TypeVar
 
 import numpy as np
 
@@ -19,6 +19,7 @@ if TYPE_CHECKING:
 
 _PORTS = 3
 _BLOCK = 8192
+_T = TypeVar("_T", np.int8, np.int64)
 
 
 class Wired(Protocol):
@@ -61,6 +62,9 @@ class SwitchTable:
         Shape (N, 3 n + 1), int64: blocking voltage, not negative; 0 beyond `count`.
     phase
         Shape (N, 3 n + 1), int8: phase in which it is closed, 1 or 2; 0 beyond `count`.
+    high, low
+        Shape (N, 3 n + 1), int8: vertices, of the phase in which it is open, between which it blocks; `high` has
+        the higher potential.
     count
         Shape (N,): number of switches.
     """
@@ -68,6 +72,8 @@ class SwitchTable:
     charges: NDArray[np.int64]
     blocking: NDArray[np.int64]
     phase: NDArray[np.int8]
+    high: NDArray[np.int8]
+    low: NDArray[np.int8]
     count: NDArray[np.int64]
 
     @property
@@ -141,8 +147,8 @@ def switch_table(table: Wired) -> SwitchTable:
     parts = [_block(table, slice(start, start + _BLOCK)) for start in range(0, rows, _BLOCK)]
     if not parts:
         shape = (0, 3 * n + 1)
-        empty = np.zeros(shape, dtype=np.int64)
-        return SwitchTable(empty, empty, np.zeros(shape, dtype=np.int8), np.zeros(0, dtype=np.int64))
+        empty, small = np.zeros(shape, dtype=np.int64), np.zeros(shape, dtype=np.int8)
+        return SwitchTable(empty, empty, small, small, small, np.zeros(0, dtype=np.int64))
     return SwitchTable(
         *(np.concatenate([getattr(part, name) for part in parts]) for name in SwitchTable.__slots__)
     )
@@ -175,7 +181,7 @@ def _block(table: Wired, rows: slice) -> SwitchTable:
     present[:, port, port] = True
     used = np.arange(v) < table.nodes[rows][:, :, None] + _PORTS
 
-    found: list[tuple[NDArray[np.int64], NDArray[np.int64], NDArray[np.bool_]]] = []
+    found: list[_Link] = []
     for phase, (matrix, there) in enumerate(
         ((net.copy(), present), (-np.swapaxes(net, 1, 2), np.swapaxes(present, 1, 2)))
     ):
@@ -190,42 +196,60 @@ def _block(table: Wired, rows: slice) -> SwitchTable:
                 np.take_along_axis(matrix, order[:, None, :], axis=2),
                 np.take_along_axis(there, order[:, None, :], axis=2),
                 level,
+                order,
             )
         )
     return _compressed(found, n)
 
 
+_Link: TypeAlias = (
+    "tuple[NDArray[np.int64], NDArray[np.int64], NDArray[np.int64], NDArray[np.int64], NDArray[np.bool_]]"
+)
+
+
 def _links(
-    charge: NDArray[np.int64], present: NDArray[np.bool_], level: NDArray[np.int64]
-) -> Iterator[tuple[NDArray[np.int64], NDArray[np.int64], NDArray[np.bool_]]]:
-    """Walk up the sorted columns; each present cluster that has one below it closes a link of the chain."""
+    charge: NDArray[np.int64], present: NDArray[np.bool_], level: NDArray[np.int64], vertex: NDArray[np.intp]
+) -> Iterator[_Link]:
+    """Walk up the sorted columns; each present cluster that has one below it closes a link of the chain.
+
+    Yields for every column: charge, blocking voltage, upper and lower vertex, and whether there is a link.
+    """
     passed = np.zeros_like(charge[:, :, 0])
-    below = np.zeros_like(passed)
+    below, under = np.zeros_like(passed), np.zeros_like(passed)
     started = np.zeros(passed.shape, dtype=bool)
     for column in range(charge.shape[2]):
         here = present[:, :, column]
         height = np.broadcast_to(level[:, column, None], here.shape)
-        yield np.abs(passed), height - below, here & started
+        name = np.broadcast_to(vertex[:, column, None], here.shape)
+        yield np.abs(passed), height - below, name, under, here & started
         passed = passed + charge[:, :, column]
-        below = np.where(here, height, below)
+        below, under = np.where(here, height, below), np.where(here, name, under)
         started = started | here
 
 
-def _compressed(
-    found: list[tuple[NDArray[np.int64], NDArray[np.int64], NDArray[np.bool_]]], n: int
-) -> SwitchTable:
+def _compressed(found: list[_Link], n: int) -> SwitchTable:
     """Move the links that exist to the front of each row."""
     half = len(found) // 2
-    carried = np.concatenate([link[0] for link in found], axis=1)
-    blocked = np.concatenate([link[1] for link in found], axis=1)
-    exists = np.concatenate([link[2] for link in found], axis=1)
+    exists = np.concatenate([link[-1] for link in found], axis=1)
     phase = np.repeat(np.array([1, 2], dtype=np.int8), [half * found[0][0].shape[1]] * 2)
     row, column = np.nonzero(exists)
     count = exists.sum(axis=1)
     place = np.arange(len(row)) - np.repeat(np.cumsum(count) - count, count)
     shape = (len(exists), 3 * n + 1)
-    charges, blocking, phases = np.zeros(shape, np.int64), np.zeros(shape, np.int64), np.zeros(shape, np.int8)
-    charges[row, place] = carried[row, column]
-    blocking[row, place] = blocked[row, column]
-    phases[row, place] = phase[column]
-    return SwitchTable(charges, blocking, phases, count)
+
+    def packed(values: NDArray[np.int64], kind: type[_T]) -> NDArray[_T]:
+        result = np.zeros(shape, dtype=kind)
+        result[row, place] = values
+        return result
+
+    charges, blocking, high, low = (
+        np.concatenate([link[k] for link in found], axis=1)[row, column] for k in range(4)
+    )
+    return SwitchTable(
+        packed(charges, np.int64),
+        packed(blocking, np.int64),
+        packed(phase[column].astype(np.int64), np.int8),
+        packed(high, np.int8),
+        packed(low, np.int8),
+        count,
+    )
