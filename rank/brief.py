@@ -224,9 +224,11 @@ def _unsound_values(brief: Brief) -> Iterator[Fault]:
         if value is not None and not (value > 0 and math.isfinite(value)):
             yield Fault(path, f"value {value} is not allowed", "a finite value above 0")
     if not (brief.required and math.isfinite(brief.required)):
-        yield Fault(_required(brief), f"value {brief.required} is not allowed", "a voltage other than 0")
+        problem = f"value {format_quantity(brief.required, 'V')} is not allowed"
+        yield Fault(_required(brief), problem, "a voltage other than 0")
     if brief.efficiency_floor is not None and brief.efficiency_floor >= 1:
-        yield Fault(("design", "efficiency"), f"value {brief.efficiency_floor} is not allowed", "below 100 %")
+        problem = f"value {format_quantity(brief.efficiency_floor, '1')} is not allowed"
+        yield Fault(("design", "efficiency"), problem, "below 100 %")
 
 
 def _required(brief: Brief) -> Path:

@@ -29,33 +29,32 @@ def cautions(brief: Brief) -> list[str]:
     Returns
     -------
     list of str
-        One sentence or a few for each danger; empty where none is known from the brief alone. Voltages are taken
+        A few sentences for each danger; empty where none is known from the brief alone. Voltages are taken
         between any two of input, output and ground, energies as if all capacitor area stood at its rating.
     """
-    # Every ratio that serves exceeds the least one, so at the highest input the output is at least this.
-    output = brief.sign * float(brief.least_ratio) * brief.input_maximum
+    output = _highest_output(brief)
     span = max(0.0, output, brief.input_maximum) - min(0.0, output)
     found = []
     if span > _SAFE_DRY:
         found.append(
-            f"{format_quantity(span, 'V')} between terminals is above {_SAFE_DRY:.0f} V d.c., where contact is "
-            f"commonly held to be dangerous: guard live parts. {_DEFER}"
+            f"{format_quantity(span, 'V')} between terminals is above {_SAFE_DRY:.0f} V d.c., where contact "
+            f"is commonly held to be dangerous: guard live parts. {_DEFER}"
         )
     elif span > _SAFE_WET:
         found.append(
-            f"{format_quantity(span, 'V')} between terminals is above {_SAFE_WET:.0f} V d.c., which is commonly "
-            f"the limit for contact in wet places, and lower where people stand in water. {_DEFER}"
+            f"{format_quantity(span, 'V')} between terminals is above {_SAFE_WET:.0f} V d.c., commonly the "
+            f"limit for contact in wet places, and lower where people stand in water. {_DEFER}"
         )
     if span > _SAFE_WET:
         found.append(
-            "A switched-capacitor converter does not isolate: one failed switch can put the input on the output. "
-            "Fuse the input, and rate or clamp what is fed."
+            "A switched-capacitor converter does not isolate: one failed switch can put the input on the "
+            "output. Fuse the input, and rate or clamp what is fed."
         )
     power = abs(brief.required) * brief.current
     if power >= _POWER_HAZARD:
         found.append(
-            f"The feed of a {format_quantity(power, 'W')} load can heat a short circuit to burning: fuse it near "
-            f"the source. {_DEFER}"
+            f"The source of a {format_quantity(power, 'W')} load can heat a short circuit until it burns: "
+            f"fuse it near the source. {_DEFER}"
         )
     energy = _stored_energy(brief)
     if energy >= _ENERGY_HAZARD:
@@ -64,6 +63,14 @@ def cautions(brief: Brief) -> list[str]:
             f"touches the board. {_DEFER}"
         )
     return found
+
+
+def _highest_output(brief: Brief) -> float:
+    """Output furthest from 0 [V]; where the ratio is open, what it is at least at the highest input."""
+    if brief.use == "regulated":
+        return brief.required
+    largest = max((abs(ratio) for ratio in brief.ratios or ()), default=brief.least_ratio)
+    return brief.sign * float(largest) * brief.input_maximum
 
 
 def _stored_energy(brief: Brief) -> float:

@@ -7,7 +7,7 @@ import re
 import tomllib
 from decimal import Decimal, InvalidOperation
 from pathlib import Path as FilePath
-from typing import TYPE_CHECKING, Annotated, Any, TypeVar, cast, get_args
+from typing import TYPE_CHECKING, Annotated, Any, TypeVar, cast, get_args, get_origin
 
 from pydantic import BaseModel, BeforeValidator, ConfigDict, ValidationError
 
@@ -233,7 +233,8 @@ def _accepted(path: Path, field: FieldInfo) -> str:
                 cast("Callable[[object], object]", check.func)(None)
             except CapmusterError as error:
                 return error.accepted or ""
-    return f"[{path[-1]}] and its fields"
+    table = f"[{path[-1]}]"
+    return f"{f'[{table}]' if get_origin(field.annotation) is tuple else table} and its fields"
 
 
 def _unknown_field(path: Path, fields: tuple[Keys, ...]) -> tuple[Fault, Path]:

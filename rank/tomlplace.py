@@ -38,8 +38,7 @@ class Places:
                 self._pair(node, ())
             elif node.type in {"table", "table_array_element"}:
                 head, *body = (child for child in node.named_children if child.type != "comment")
-                path = self._header(_keys(head), lengths, opens=node.type == "table_array_element")
-                self._lines.setdefault(path, _line(head))
+                path = self._header(head, lengths, opens=node.type == "table_array_element")
                 for pair in body:
                     self._pair(pair, path)
 
@@ -53,16 +52,18 @@ class Places:
         """``file:line`` of a value, or of the innermost table or list around it that the file has."""
         return f"{self.name}:{self.line(path)}"
 
-    @staticmethod
-    def _header(keys: tuple[str, ...], lengths: dict[Path, int], *, opens: bool) -> Path:
+    def _header(self, head: Node, lengths: dict[Path, int], *, opens: bool) -> Path:
         """Path of a table; the keys of a [[list]] stand for its last table."""
         path: Path = ()
+        keys = _keys(head)
         for depth, key in enumerate(keys, start=1):
             path = (*path, key)
+            self._lines.setdefault(path, _line(head))
             if opens and depth == len(keys):
                 lengths[path] = lengths.get(path, 0) + 1
             if path in lengths:
                 path = (*path, lengths[path] - 1)
+                self._lines.setdefault(path, _line(head))
         return path
 
     def _pair(self, node: Node, above: Path) -> None:
