@@ -1,0 +1,1 @@
+"""One command per module; each offers a click command called ``command``."""
