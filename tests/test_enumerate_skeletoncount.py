@@ -8,7 +8,6 @@ neither classes structures by the space of their constraints, as the tested gene
 
 from __future__ import annotations
 
-import time
 from collections import Counter
 from itertools import combinations, combinations_with_replacement
 from math import comb, factorial, gcd, prod
@@ -151,10 +150,3 @@ def test_totals_are_the_sums_over_the_splits() -> None:
 def test_out_of_reach_is_refused(n: int) -> None:
     with pytest.raises(CapmusterError, match=f"{n}.*from 1 to 6"):
         labelled_skeletons(n)
-
-
-@pytest.mark.benchmark
-def test_speed() -> None:
-    start = time.perf_counter()
-    labelled_skeletons(6)
-    assert time.perf_counter() - start < 30
