@@ -61,7 +61,7 @@ class Brief:
     silicon_area, capacitor_area
         Most area for switches and for capacitors apart [mm2]: both, or None if `area` holds or it is free.
     efficiency_floor
-        Least efficiency, over the input range [1], or None.
+        Least efficiency at the worst input of the range [1], or None.
     name
         The name it was loaded by: the file's name without suffix.
 

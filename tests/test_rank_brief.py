@@ -88,7 +88,7 @@ def test_every_field_is_read_in_base_units(tmp_path):
     )
     assert NODE.use == "fixed-ratio"
     assert NODE.ratios is None
-    assert (NODE.most_switches, NODE.silicon_area, NODE.efficiency_floor) == (None, None, None)
+    assert (NODE.most_switches, NODE.silicon_area, NODE.capacitor_area) == (None, None, None)
 
 
 def test_a_byte_order_mark_and_foreign_line_ends_do_no_harm(tmp_path):
