@@ -97,5 +97,6 @@ def _write_table(counted: CensusCount) -> None:
         f"{counted.cells} cell{'' if counted.cells == 1 else 's'}, "
         f"{counted.clean} clean, {counted.degenerate} degenerate; {counted.unity} unity cells besides.\n"
         f"Labelled skeletons: {certificate.skeletons_listed} listed, {certificate.skeletons_counted} by the "
-        f"separate generator.\n{'Certified: every pair of counts agrees.' if certificate.holds else 'NOT certified.'}"
+        "separate generator.\n"
+        f"{'Certified: every pair of counts agrees.' if certificate.holds else 'NOT certified.'}"
     )
