@@ -59,30 +59,32 @@ def analyse(words: Sequence[Word]) -> Balance:
     Raises
     ------
     IllPosedError
-        When the wiring is no irreducible converter. The message says which capacitor is idle, which are
-        redundant, which node floats or which voltages contradict.
+        When the wiring is no irreducible converter. The message says which capacitors are idle or redundant,
+        which reach no port, or which voltages contradict or are left open.
     """
-    nodes = [max(0, *(max(word[p], word[p + 1]) - N_PORTS + 1 for word in words)) for p in (0, 2)]
+    nodes = [max(0, *(max(word[p : p + 2]) - N_PORTS + 1 for word in words)) for p in (0, 2)]
     internal, ports = _incidence(words, nodes)
+    _refuse_floating_groups(words)
     charges = _null_space(internal, len(words))
     port_flow = [[_dot(port, q) for port in ports] for q in charges]
-    _refuse_floating_nodes(words)
     _refuse_unless_irreducible(words, charges, port_flow)
 
-    scale = -1 if (port_flow[0][I], port_flow[0][O]) < (0, 0) else 1
+    delivered, taken = port_flow[0][I], port_flow[0][O]
+    scale = -1 if (delivered, taken) < (0, 0) else 1
     q = [scale * value for value in charges[0]]
     g = [scale * value for value in port_flow[0]]
     _refuse_useless_ports(g)
 
-    # Unknowns: internal potentials of phases 1 and 2, then U_I and U_O with U_G = 0. One line per capacitor says
-    # that its voltage is the same in both phases; charge balance being solvable, one solution is left.
+    # Unknowns: internal potentials of phases 1 and 2, then U_I and U_O with U_G = 0. One line per capacitor
+    # says that its voltage is the same in both phases. As charge balance can be met, there is a solution.
     lines = [
         [internal[row][i] * (1 if row < nodes[0] else -1) for row in range(sum(nodes))]
         + [ports[I][i], ports[O][i]]
         for i in range(len(words))
     ]
-    (solution,) = _null_space(lines, sum(nodes) + 2)
-    x = [Fraction(value, solution[-2]) for value in solution]
+    solutions = _null_space(lines, sum(nodes) + 2)
+    _refuse_unless_shared(words, solutions, nodes)
+    x = [Fraction(value, solutions[0][-2]) for value in solutions[0]]
     base = [Fraction(0), Fraction(1), x[-1]]
     first, second = tuple(base + x[: nodes[0]]), tuple(base + x[nodes[0] : nodes[0] + nodes[1]])
     return Balance(
@@ -147,13 +149,19 @@ def _dot(left: Iterable[int], right: Iterable[int]) -> int:
     return sum(a * b for a, b in zip(left, right, strict=True))
 
 
-def _named(indices: Iterable[int]) -> str:
+def _named(indices: Sequence[int]) -> str:
+    """List capacitors by name: C1, C2 and C3."""
     names = [f"C{i + 1}" for i in indices]
     return names[0] if len(names) == 1 else ", ".join(names[:-1]) + " and " + names[-1]
 
 
-def _refuse_floating_nodes(words: Sequence[Word]) -> None:
-    """A group of capacitors that reaches no port has no defined potential."""
+def _named_with(indices: Sequence[int], one: str, many: str) -> str:
+    """List capacitors, followed by the verb that agrees with their number."""
+    return f"{_named(indices)} {one if len(indices) == 1 else many}"
+
+
+def _refuse_floating_groups(words: Sequence[Word]) -> None:
+    """Refuse a group of capacitors that reaches no port: nothing defines its potential."""
     for phase in (0, 1):
         edges = [word[2 * phase : 2 * phase + 2] for word in words]
         reached = set(range(N_PORTS))
@@ -165,7 +173,7 @@ def _refuse_floating_nodes(words: Sequence[Word]) -> None:
         afloat = [i for i, edge in enumerate(edges) if edge[0] not in reached]
         if afloat:
             raise IllPosedError(
-                f"wiring: {_named(afloat)} reach{'es' if len(afloat) == 1 else ''} no port in phase {phase + 1}",
+                f"wiring: {_named_with(afloat, 'reaches', 'reach')} no port in phase {phase + 1}",
                 accepted="wirings in which every group of capacitors touches a port in each phase",
             )
 
@@ -176,47 +184,57 @@ def _refuse_unless_irreducible(
     accepted = (
         "irreducible wirings, where charge balance fixes every capacitor's charge and none of them is zero"
     )
-    if not charges:
-        raise IllPosedError(
-            f"wiring: {_named(range(len(words)))} {'is' if len(words) == 1 else 'are'} idle: "
-            "charge balance leaves no charge to flow",
-            accepted=accepted,
-        )
-    flowing = [flow for flow in port_flow if any(flow)]
     if len(charges) > 1:
         circulating = _circulating(charges, port_flow)
         if circulating:
             raise IllPosedError(
-                f"wiring: {_named(circulating)} {'is' if len(circulating) == 1 else 'are'} redundant: "
-                "the wiring does not fix the charge",
+                f"wiring: {_named_with(circulating, 'is', 'are')} redundant: charge balance leaves "
+                f"{'its charge' if len(circulating) == 1 else 'their charges'} open",
                 accepted=accepted,
             )
         clashing = [i for i in range(len(words)) if any(q[i] for q in charges)]
         raise IllPosedError(
-            f"wiring: the voltages of {_named(clashing)} contradict: the two phases ask for different ratios",
+            f"wiring: the voltages of {_named(clashing)} contradict: they ask for different ratios",
             accepted=accepted,
         )
-    idle = [i for i, value in enumerate(charges[0]) if not value]
+    idle = [i for i in range(len(words)) if not charges or not charges[0][i]]
     if idle:
         raise IllPosedError(
-            f"wiring: {_named(idle)} {'is' if len(idle) == 1 else 'are'} idle: no charge flows through",
+            f"wiring: {_named_with(idle, 'is', 'are')} idle: charge balance lets no charge through",
             accepted=accepted,
-        )
-    if not flowing:
-        raise IllPosedError(
-            f"wiring: {_named(range(len(words)))} only exchange charge with each other: no port takes part",
-            accepted="wirings that move charge from I to O",
         )
 
 
 def _circulating(charges: list[list[int]], port_flow: list[list[int]]) -> list[int]:
-    """Capacitors on charges that can circulate without any port noticing."""
+    """List the capacitors on charges that can circulate without any port noticing."""
     combinations = _null_space([list(column) for column in zip(*port_flow, strict=True)], len(charges))
     loops = [[_dot(weights, column) for column in zip(*charges, strict=True)] for weights in combinations]
     return [i for i in range(len(charges[0])) if any(loop[i] for loop in loops)]
 
 
 def _refuse_useless_ports(g: Sequence[int]) -> None:
+    """Refuse a wiring that moves no charge from the input to the output."""
+    accepted = "wirings that move charge from I to O"
+    if not any(g):
+        raise IllPosedError("wiring: no port delivers charge over a whole cycle", accepted=accepted)
     for port, name in ((I, "the input I delivers"), (O, "the output O takes")):
         if not g[port]:
-            raise IllPosedError(f"wiring: {name} no charge", accepted="wirings that move charge from I to O")
+            raise IllPosedError(f"wiring: {name} no charge over a whole cycle", accepted=accepted)
+
+
+def _refuse_unless_shared(
+    words: Sequence[Word], solutions: Sequence[Sequence[int]], nodes: Sequence[int]
+) -> None:
+    """Refuse capacitors that share a voltage which nothing divides, such as those of ``I-a/O-b a-G/b-G``."""
+    if len(solutions) == 1:
+        return
+    # Of all solutions, those that leave the ports at zero.
+    at_ports = [[solution[column] for solution in solutions] for column in (-2, -1)]
+    free = _null_space(at_ports, len(solutions))
+    moved = [[_dot(weights, column) for column in zip(*solutions, strict=True)] for weights in free]
+    potentials = [[0] * N_PORTS + solution[: nodes[0]] for solution in moved]
+    sharing = [i for i, word in enumerate(words) if any(u[word[0]] != u[word[1]] for u in potentials)]
+    raise IllPosedError(
+        f"wiring: the voltages of {_named(sharing)} are open: nothing divides the voltage that they share",
+        accepted="wirings in which every capacitor's voltage follows from the input's",
+    )

@@ -3,11 +3,20 @@
 Exact potentials, voltages and charges survive every renaming, so they order capacitors first; only capacitors
 that tie in all of them are searched. The form is the least, over both phase orders, of the sorted invariants
 followed by the words with internal nodes named in their order of appearance.
+
+Up to six capacitors the search tries every order of tied ones, as `capmuster.enumerate.canonicalbatch` does.
+Above that ties are split by colour refinement, as in McKay, "Practical graph isomorphism", Congressus
+Numerantium 30, 1981: two capacitors differ where their plates meet different company. A tie that remains is
+broken in every way in turn. An irreducible converter has no symmetry that keeps its phases (a null space of
+one dimension leaves no room for one), so this seldom branches; twenty tied capacitors would have 20! orders.
 """
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING, TypeAlias
+from itertools import chain, groupby, permutations, product
+from typing import TYPE_CHECKING, TypeAlias, TypeVar
+
+from capmuster.enumerate.balance import N_PORTS
 
 if TYPE_CHECKING:
     from collections.abc import Iterator, Sequence
@@ -15,8 +24,11 @@ if TYPE_CHECKING:
 
     from capmuster.enumerate.balance import Balance, Word
 
+MOST_TRIED = 6
+"""Most capacitors whose tied orders are all tried."""
+
 _Invariants: TypeAlias = "tuple[Fraction | int, ...]"
-_N_PORTS = 3
+_Key = TypeVar("_Key", bound="tuple[object, ...] | int")
 
 
 def canonical_words(words: Sequence[Word], balance: Balance) -> tuple[Word, ...]:
@@ -41,74 +53,78 @@ def _in_phase_order(
     for word, voltage, charge in zip(words, balance.voltages, balance.charges, strict=True):
         taken = charge if first == 0 else -charge
         plus1, minus1, plus2, minus2 = word if first == 0 else (word[2], word[3], word[0], word[1])
-        if (voltage, taken) < (0, 0) or (voltage == 0 and taken < 0):
+        if voltage < 0 or (voltage == 0 and taken < 0):
             plus1, minus1, plus2, minus2 = minus1, plus1, minus2, plus2
             voltage, taken = -voltage, -taken  # noqa: PLW2901 -- the same capacitor, seen from its other plate
         keyed.append(((voltage, ahead[minus1], behind[minus2], taken), (plus1, minus1, plus2, minus2)))
     keyed.sort(key=lambda pair: pair[0])
-    return [invariants for invariants, _ in keyed], _least_words(keyed)
+    invariants = [key for key, _ in keyed]
+    return invariants, _least_words([word for _, word in keyed], _ranks(invariants))
 
 
-def _least_words(keyed: Sequence[tuple[_Invariants, Word]]) -> tuple[Word, ...]:
-    """Least sequence of words among the orders that keep the invariants sorted.
-
-    All partial orders with the same, least beginning are carried along. Two of them that have the same
-    capacitors and the same names on nodes still in use continue alike, so one of them is enough.
-    """
-    result: list[Word] = []
-    states: list[tuple[frozenset[int], tuple[dict[int, int], dict[int, int]]]] = [(frozenset(), ({}, {}))]
-    for tied in _runs([invariants for invariants, _ in keyed]):
-        for _ in tied:
-            least: Word | None = None
-            following: dict[object, tuple[frozenset[int], tuple[dict[int, int], dict[int, int]]]] = {}
-            for used, names in states:
-                for i in tied:
-                    if i in used:
-                        continue
-                    word, new_names = _named(keyed[i][1], names)
-                    if least is None or word < least:
-                        least, following = word, {}
-                    if word == least:
-                        now_used = used | {i}
-                        live = _live_names(keyed, now_used, new_names)
-                        following[now_used, live] = (now_used, new_names)
-            assert least is not None  # noqa: S101 -- each tied capacitor is placed once
-            result.append(least)
-            states = list(following.values())
-    return tuple(result)
-
-
-def _runs(keys: Sequence[_Invariants]) -> Iterator[range]:
-    """Ranges of equal neighbours."""
-    start = 0
-    for stop in range(1, len(keys) + 1):
-        if stop == len(keys) or keys[stop] != keys[start]:
-            yield range(start, stop)
-            start = stop
-
-
-def _named(
-    word: Word, names: tuple[dict[int, int], dict[int, int]]
-) -> tuple[Word, tuple[dict[int, int], dict[int, int]]]:
-    """Write a word in canonical names, naming the nodes that appear for the first time."""
-    new = (dict(names[0]), dict(names[1]))
-    out = [
-        v if v < _N_PORTS else new[k // 2].setdefault(v, _N_PORTS + len(new[k // 2]))
-        for k, v in enumerate(word)
-    ]
-    return (out[0], out[1], out[2], out[3]), new
-
-
-def _live_names(
-    keyed: Sequence[tuple[_Invariants, Word]],
-    used: frozenset[int],
-    names: tuple[dict[int, int], dict[int, int]],
-) -> frozenset[tuple[int, int, int]]:
-    """Names of the nodes that capacitors not yet placed still touch."""
-    waiting = [word for i, (_, word) in enumerate(keyed) if i not in used]
-    return frozenset(
-        (phase, vertex, name)
-        for phase in (0, 1)
-        for vertex, name in names[phase].items()
-        if any(vertex in word[2 * phase : 2 * phase + 2] for word in waiting)
+def _least_words(words: Sequence[Word], colours: Sequence[int]) -> tuple[Word, ...]:
+    """Least words, nodes renamed, among the orders that keep colours sorted."""
+    if len(words) <= MOST_TRIED:
+        return min(nodes_named([words[i] for i in order]) for order in _orders(colours))
+    colours = _refined(words, colours)
+    order = sorted(range(len(words)), key=colours.__getitem__)
+    tied = next((group for group in _runs(order, colours) if len(group) > 1), None)
+    if tied is None:
+        return nodes_named([words[i] for i in order])
+    return min(
+        _least_words(words, [2 * colour - (i == first) for i, colour in enumerate(colours)]) for first in tied
     )
+
+
+def _orders(colours: Sequence[int]) -> Iterator[tuple[int, ...]]:
+    """All orders of indices that keep colours sorted."""
+    order = sorted(range(len(colours)), key=colours.__getitem__)
+    for choice in product(*(permutations(group) for group in _runs(order, colours))):
+        yield tuple(chain.from_iterable(choice))
+
+
+def _runs(order: Sequence[int], colours: Sequence[int]) -> list[list[int]]:
+    """Neighbours of one colour."""
+    return [list(group) for _, group in groupby(order, key=colours.__getitem__)]
+
+
+def _refined(words: Sequence[Word], colours: Sequence[int]) -> list[int]:
+    """Split colours by the colours of the plates that each plate meets, until none splits."""
+    colours = _ranks(colours)
+    while True:
+        company: dict[tuple[int, int], list[tuple[int, int]]] = {}
+        for word, colour in zip(words, colours, strict=True):
+            for column, vertex in enumerate(word):
+                company.setdefault((column // 2, vertex), []).append((colour, column % 2))
+        vertices = [(min(vertex, N_PORTS), tuple(sorted(plates))) for (_, vertex), plates in company.items()]
+        met = dict(zip(company, _ranks(vertices), strict=True))
+        finer = _ranks(
+            [
+                (colour, *(met[column // 2, vertex] for column, vertex in enumerate(word)))
+                for word, colour in zip(words, colours, strict=True)
+            ]
+        )
+        if max(finer) == max(colours):
+            return finer
+        colours = finer
+
+
+def _ranks(keys: Sequence[_Key]) -> list[int]:
+    """Place of each key among the distinct ones."""
+    rank = {key: place for place, key in enumerate(sorted(set(keys)))}
+    return [rank[key] for key in keys]
+
+
+def nodes_named(words: Sequence[Word]) -> tuple[Word, ...]:
+    """Name internal nodes in their order of appearance, phase by phase."""
+    names: tuple[dict[int, int], dict[int, int]] = ({}, {})
+    named = []
+    for word in words:
+        a, b, c, d = (
+            vertex
+            if vertex < N_PORTS
+            else names[column // 2].setdefault(vertex, N_PORTS + len(names[column // 2]))
+            for column, vertex in enumerate(word)
+        )
+        named.append((a, b, c, d))
+    return tuple(named)

@@ -35,3 +35,8 @@ class WiringError(CapmusterError):
 
 class IllPosedError(CapmusterError):
     """A wiring that can be read and is no converter: the reason names the capacitors."""
+
+
+def shortened(text: str, most: int = 40) -> str:
+    """Cut what a user gave to a length that an error message can quote."""
+    return text if len(text) <= most else text[: most - 3] + "..."

@@ -1,15 +1,17 @@
 """The short id of a converter, derived from its canonical wiring.
 
-Up to six capacitors the id is the wiring itself, written as one number: no two converters can share it, and it
-can be read back. Above that it is 60 bits of a hash of the wiring.
+Up to six capacitors the id is the wiring itself, written as one number: no two converters can share it, and
+it can be read back. Above that it is 60 bits of a hash of the wiring.
 """
 
 from __future__ import annotations
 
 import hashlib
+import re
 from typing import TYPE_CHECKING
 
-from capmuster.enumerate.errors import CapmusterError
+from capmuster.enumerate.balance import N_PORTS
+from capmuster.enumerate.errors import CapmusterError, shortened
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
@@ -22,17 +24,11 @@ if TYPE_CHECKING:
 ALPHABET = "0123456789abcdefghjkmnpqrstvwxyz"
 """Base 32 without the letters that are mistaken for digits or for each other."""
 MOST_READABLE = 6
-_N_PORTS = 3
+"""Most capacitors whose id is the wiring itself."""
 _HASH_DIGITS = 12
-_DIGITS = (
-    0,
-    2,
-    3,
-    5,
-    7,
-    10,
-    12,
-)  # least that holds the largest number for 1 to 6 capacitors; a test checks it
+# Digits by number of capacitors: the least that hold the largest number.
+_DIGITS = {1: 2, 2: 3, 3: 5, 4: 7, 5: 10, 6: 12}
+_FORM = re.compile(rf"([1-9][0-9]{{0,3}})-([{ALPHABET}]+)\Z")
 _ACCEPTED = "an id such as '1-1b', as list prints it"
 
 
@@ -53,7 +49,7 @@ def wiring_number(words: NDArray[np.integer], m1: NDArray[np.integer]) -> NDArra
     import numpy as np  # noqa: PLC0415
 
     n = words.shape[1]
-    vertices = [(m1 + _N_PORTS).astype(np.uint64), (n - 1 - m1 + _N_PORTS).astype(np.uint64)]
+    vertices = [(m1 + N_PORTS).astype(np.uint64), (n - 1 - m1 + N_PORTS).astype(np.uint64)]
     number = np.zeros(len(words), dtype=np.uint64)
     for i in range(n):
         for phase, count in enumerate(vertices):
@@ -79,7 +75,7 @@ def converter_id(words: Sequence[Word]) -> str:
     import numpy as np  # noqa: PLC0415
 
     array = np.array([words], dtype=np.int64)
-    m1 = np.maximum(array[:, :, :2].max(axis=(1, 2)) - _N_PORTS + 1, 0)
+    m1 = np.maximum(array[:, :, :2].max(axis=(1, 2)) - N_PORTS + 1, 0)
     return id_of_number(int(wiring_number(array, m1)[0]), n)
 
 
@@ -93,21 +89,23 @@ def words_of_id(text: str) -> tuple[Word, ...] | None:
     CapmusterError
         When the text is not of the form of an id.
     """
-    count, _, digits = text.partition("-")
-    if not (
-        count.isascii() and count.isdecimal() and count[0] != "0" and digits and set(digits) <= set(ALPHABET)
-    ):
-        raise CapmusterError(f"id '{text}' is malformed", accepted=_ACCEPTED)
-    n = int(count)
-    if len(digits) != (_DIGITS[n] if n <= MOST_READABLE else _HASH_DIGITS):
-        raise CapmusterError(f"id '{text}' has {len(digits)} digits", accepted=_ACCEPTED)
+    match = _FORM.match(text)
+    if match is None:
+        raise CapmusterError(f"id '{shortened(text)}' is malformed", accepted=_ACCEPTED)
+    n, digits = int(match[1]), match[2]
+    wanted = _DIGITS.get(n, _HASH_DIGITS)
+    if len(digits) != wanted:
+        raise CapmusterError(
+            f"id '{shortened(text)}' has {len(digits)} digits after its first part",
+            accepted=f"{wanted} of them for {n} capacitor{'s' if n > 1 else ''}",
+        )
     if n > MOST_READABLE:
         return None
     number = 0
     for digit in digits:
         number = 32 * number + ALPHABET.index(digit)
     number, m1 = divmod(number, n)
-    counts = (m1 + _N_PORTS, n - 1 - m1 + _N_PORTS)
+    counts = (m1 + N_PORTS, n - 1 - m1 + N_PORTS)
     words: list[Word] = []
     for _ in range(n):
         word: list[int] = []

@@ -1,23 +1,27 @@
-"""How one converter is wired: the wiring code, and converters and cells as immutable values.
-
-A vertex of a phase is a number: 0, 1, 2 are the ports (G, I, O of a converter; A, B, C of a cell) and
-``3 + k`` is internal node ``k`` of that phase. A *word* is one capacitor: the vertices of its plus and minus
-plate in phase 1, then in phase 2.
-"""
+"""Converters and cells as immutable values, always in canonical form."""
 
 from __future__ import annotations
 
-import json
-import re
 from dataclasses import dataclass
 from functools import cached_property
 from itertools import permutations
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING
 
-from capmuster.enumerate.balance import Balance, analyse
+from capmuster.enumerate.balance import N_PORTS, Balance, analyse
 from capmuster.enumerate.canonical import canonical_words
-from capmuster.enumerate.errors import WiringError
+from capmuster.enumerate.errors import IllPosedError, WiringError, shortened
 from capmuster.enumerate.identity import converter_id
+from capmuster.enumerate.notation import (
+    CELL_PORTS,
+    CONVERTER_PORTS,
+    checked_words,
+    format_words,
+    node_name,
+    parse_words,
+    vertex_name,
+    words_from_json,
+    words_to_json,
+)
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
@@ -25,82 +29,21 @@ if TYPE_CHECKING:
 
     from capmuster.enumerate.balance import Word
 
-CONVERTER_PORTS = ("G", "I", "O")
-CELL_PORTS = ("A", "B", "C")
-N_PORTS = 3
+__all__ = [
+    "CELL_PORTS",
+    "CONVERTER_PORTS",
+    "N_PORTS",
+    "ROLES",
+    "Cell",
+    "Converter",
+    "format_words",
+    "node_name",
+    "parse_words",
+    "vertex_name",
+]
+
 ROLES = tuple("".join(role) for role in permutations(CONVERTER_PORTS))
 """The six roles of a cell: the names that its ports A, B, C take, in this order."""
-
-_SYNTAX = (
-    "one word per capacitor, plus-minus/plus-minus, e.g. 'I-G/O-I'; ports {}; internal nodes in lower case"
-)
-_NODE = re.compile(r"[a-z][a-z0-9_]*\Z")
-_MOST_CAPACITORS = 400
-
-
-def node_name(index: int) -> str:
-    """Name of internal node ``index``: a, b, ..., z, aa, ab, ... ."""
-    name = ""
-    index += 1
-    while index:
-        index, letter = divmod(index - 1, 26)
-        name = chr(ord("a") + letter) + name
-    return name
-
-
-def vertex_name(vertex: int, ports: Sequence[str] = CONVERTER_PORTS) -> str:
-    """Name of a vertex: a port's letter, or an internal node's lower-case name."""
-    return ports[vertex] if vertex < N_PORTS else node_name(vertex - N_PORTS)
-
-
-def format_words(words: Sequence[Sequence[int]], ports: Sequence[str] = CONVERTER_PORTS) -> str:
-    """Write words as a wiring code."""
-    named = ([vertex_name(int(v), ports) for v in word] for word in words)
-    return " ".join(f"{a}-{b}/{c}-{d}" for a, b, c, d in named)
-
-
-def parse_words(text: str, ports: Sequence[str] = CONVERTER_PORTS) -> tuple[Word, ...]:
-    """Read a wiring code; nodes are numbered in their order of appearance, phase by phase.
-
-    Raises
-    ------
-    WiringError
-        When a word is malformed, or a capacitor has both plates on one vertex.
-    """
-    accepted = _SYNTAX.format(", ".join(ports))
-    chunks = text.split()
-    if not chunks:
-        raise WiringError("wiring '' has no capacitor", accepted=accepted)
-    if len(chunks) > _MOST_CAPACITORS:
-        raise WiringError(f"wiring has {len(chunks)} capacitors", accepted=f"at most {_MOST_CAPACITORS}")
-    nodes: tuple[dict[str, int], dict[str, int]] = ({}, {})
-    words: list[Word] = []
-    for number, chunk in enumerate(chunks, start=1):
-        here = f"wiring: capacitor {number} '{_shortened(chunk)}'"
-        phases = [phase.split("-") for phase in chunk.split("/")]
-        if [len(phase) for phase in phases] != [2, 2]:
-            raise WiringError(f"{here} is malformed", accepted=accepted)
-        word: list[int] = []
-        for names, phase in zip(nodes, phases, strict=True):
-            for name in phase:
-                if name in ports:
-                    word.append(ports.index(name))
-                elif _NODE.match(name):
-                    word.append(N_PORTS + names.setdefault(name, len(names)))
-                else:
-                    raise WiringError(f"{here}: unknown vertex '{_shortened(name)}'", accepted=accepted)
-        if word[0] == word[1] or word[2] == word[3]:
-            shorted = 1 if word[0] == word[1] else 2
-            raise WiringError(
-                f"{here} has both plates on one vertex in phase {shorted}",
-                accepted="two different vertices in each phase",
-            )
-        words.append((word[0], word[1], word[2], word[3]))
-    return tuple(words)
-
-
-def _shortened(text: str, most: int = 40) -> str:
-    return text if len(text) <= most else text[: most - 3] + "..."
 
 
 @dataclass(frozen=True, slots=True)
@@ -126,19 +69,37 @@ class Converter(_Wired):
 
     Converters compare equal when they differ only by capacitor order, polarity, node names or phase order.
     Capacitors stand in the order of their voltage, and their plates are named so that no voltage is negative.
+
+    Parameters
+    ----------
+    words
+        The wiring over the ports G = 0, I = 1, O = 2, in any order and with any node numbers.
+
+    Raises
+    ------
+    WiringError
+        When the words are malformed.
+    IllPosedError
+        When the wiring is no converter: the message names the capacitors and the reason.
     """
+
+    def __post_init__(self) -> None:
+        """Check the wiring and bring it into canonical form."""
+        words = checked_words(self.words)
+        object.__setattr__(self, "words", canonical_words(words, analyse(words)))
 
     @classmethod
     def of(cls, words: Sequence[Sequence[int]]) -> Converter:
-        """Make a converter of words over the ports G = 0, I = 1, O = 2.
+        """Make a converter of words in any kind of sequence, such as the rows of an array.
 
         Raises
         ------
+        WiringError
+            When the words are malformed.
         IllPosedError
-            When the wiring is no converter: the message names the capacitors and the reason.
+            When the wiring is no converter.
         """
-        given: tuple[Word, ...] = tuple((int(a), int(b), int(c), int(d)) for a, b, c, d in words)
-        return cls(canonical_words(given, analyse(given)))
+        return cls(checked_words(words))
 
     @classmethod
     def parse(cls, code: str) -> Converter:
@@ -151,7 +112,7 @@ class Converter(_Wired):
         IllPosedError
             When the wiring is no converter.
         """
-        return cls.of(parse_words(code))
+        return cls(parse_words(code))
 
     @classmethod
     def from_json(cls, text: str) -> Converter:
@@ -161,8 +122,10 @@ class Converter(_Wired):
         ------
         WiringError
             When the text is not of that form.
+        IllPosedError
+            As `parse`.
         """
-        return cls.parse(_code_in_json(text, "converter"))
+        return cls(words_from_json(text, "converter", CONVERTER_PORTS))
 
     @cached_property
     def balance(self) -> Balance:
@@ -190,33 +153,55 @@ class Converter(_Wired):
         return Cell.of(self.words)
 
     def swapped(self) -> Converter:
-        """The converter with input and output exchanged: its ratio is 1/M."""
+        """Exchange input and output: the ratio becomes 1/M."""
         exchange = (0, 2, 1)
         return Converter.of([[exchange[v] if v < N_PORTS else v for v in word] for word in self.words])
 
     def to_json(self) -> str:
         """Write the wiring as JSON."""
-        return _to_json("converter", self.words, CONVERTER_PORTS)
+        return words_to_json("converter", self.words, CONVERTER_PORTS)
 
     def __str__(self) -> str:
-        """The canonical wiring code."""
+        """Return the canonical wiring code."""
         return self.code
 
 
 @dataclass(frozen=True)
 class Cell(_Wired):
-    """The wiring of both phases over unnamed ports A, B, C, in canonical form."""
+    """The wiring of both phases over unnamed ports A, B, C, in canonical form.
+
+    That form is the least among its converters' wirings, so cells that differ by port names are equal too.
+
+    Parameters
+    ----------
+    words
+        The wiring over three ports 0, 1, 2 in any order.
+
+    Raises
+    ------
+    WiringError
+        When the words are malformed.
+    IllPosedError
+        When no role makes a converter of it.
+    """
+
+    def __post_init__(self) -> None:
+        """Check the wiring and bring it into canonical form."""
+        converters = _converters(checked_words(self.words))
+        object.__setattr__(self, "words", min(converter.words for converter in converters))
 
     @classmethod
     def of(cls, words: Sequence[Sequence[int]]) -> Cell:
-        """Make a cell of words over three ports in any order: the least of its converters' wirings.
+        """Make a cell of words in any kind of sequence, such as the rows of an array.
 
         Raises
         ------
+        WiringError
+            When the words are malformed.
         IllPosedError
             When no role makes a converter of it.
         """
-        return cls(min(converter.words for converter in _converters(words)))
+        return cls(checked_words(words))
 
     @classmethod
     def parse(cls, code: str) -> Cell:
@@ -229,7 +214,7 @@ class Cell(_Wired):
         IllPosedError
             When no role makes a converter of it.
         """
-        return cls.of(parse_words(code, CELL_PORTS))
+        return cls(parse_words(code, CELL_PORTS))
 
     @classmethod
     def from_json(cls, text: str) -> Cell:
@@ -239,8 +224,10 @@ class Cell(_Wired):
         ------
         WiringError
             When the text is not of that form.
+        IllPosedError
+            As `parse`.
         """
-        return cls.parse(_code_in_json(text, "cell"))
+        return cls(words_from_json(text, "cell", CELL_PORTS))
 
     @property
     def code(self) -> str:
@@ -258,7 +245,7 @@ class Cell(_Wired):
             When the cell is no converter in this role (a unity cell has its idle port at ground).
         """
         if role not in ROLES:
-            raise WiringError(f"role '{_shortened(role)}' is unknown", accepted=", ".join(ROLES))
+            raise WiringError(f"role '{shortened(role)}' is unknown", accepted=", ".join(ROLES))
         return Converter.of(_in_role(self.words, role))
 
     @property
@@ -274,10 +261,10 @@ class Cell(_Wired):
 
     def to_json(self) -> str:
         """Write the wiring as JSON."""
-        return _to_json("cell", self.words, CELL_PORTS)
+        return words_to_json("cell", self.words, CELL_PORTS)
 
     def __str__(self) -> str:
-        """The canonical wiring code."""
+        """Return the canonical wiring code."""
         return self.code
 
 
@@ -286,8 +273,6 @@ def _in_role(words: Sequence[Sequence[int]], role: str) -> list[list[int]]:
 
 
 def _converters(words: Sequence[Sequence[int]]) -> set[Converter]:
-    from capmuster.enumerate.errors import IllPosedError  # noqa: PLC0415
-
     found: set[Converter] = set()
     reason: IllPosedError | None = None
     for role in ROLES:
@@ -298,28 +283,3 @@ def _converters(words: Sequence[Sequence[int]]) -> set[Converter]:
     if not found and reason is not None:
         raise reason
     return found
-
-
-def _to_json(kind: str, words: Sequence[Word], ports: Sequence[str]) -> str:
-    capacitors = [
-        {
-            "plus": [vertex_name(word[0], ports), vertex_name(word[2], ports)],
-            "minus": [vertex_name(word[1], ports), vertex_name(word[3], ports)],
-        }
-        for word in words
-    ]
-    return json.dumps({"kind": kind, "capacitors": capacitors})
-
-
-def _code_in_json(text: str, kind: str) -> str:
-    accepted = f'{{"kind": "{kind}", "capacitors": [{{"plus": ["I", "O"], "minus": ["G", "I"]}}, ...]}}'
-    try:
-        data: Any = json.loads(text)
-        if data["kind"] != kind:
-            raise WiringError(f"kind: '{_shortened(str(data['kind']))}'", accepted=accepted)
-        pairs = [(c["plus"], c["minus"]) for c in data["capacitors"]]
-        return " ".join(f"{plus[0]}-{minus[0]}/{plus[1]}-{minus[1]}" for plus, minus in pairs)
-    except (json.JSONDecodeError, KeyError, TypeError, IndexError) as error:
-        raise WiringError(
-            f"wiring in JSON: '{_shortened(text)}' cannot be read", accepted=accepted
-        ) from error

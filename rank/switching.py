@@ -1,16 +1,16 @@
 """Hard-wired nodes and the switches of one converter, exactly.
 
 Plates and ports that share a vertex in both phases form one hard-wired node, a *cluster*. Inside a vertex the
-clusters are tied together by switches. A switch that closes there blocks, in the other phase, the difference of
-its clusters' potentials in that phase; these lie on a line, so the chain sorted by them has the least sum of
-|charge| x |blocking voltage| of all trees (optimal transport on a line).
+clusters are tied together by switches. A switch that closes there blocks, in the other phase, the difference
+of its clusters' potentials in that phase; these lie on a line, so the chain sorted by them has the least sum
+of |charge| x |blocking voltage| of all trees (optimal transport on a line).
 """
 
 from __future__ import annotations
 
 from dataclasses import dataclass
 from fractions import Fraction
-from itertools import groupby, pairwise, permutations
+from itertools import groupby, pairwise
 from typing import TYPE_CHECKING
 
 from capmuster.enumerate.wiring import CONVERTER_PORTS, N_PORTS
@@ -20,7 +20,7 @@ if TYPE_CHECKING:
 
     from capmuster.enumerate.wiring import Converter
 
-_MOST_PERMUTED = 7
+_MOST_ORDERED = 10
 
 
 @dataclass(frozen=True, slots=True)
@@ -174,26 +174,34 @@ def _chain(
         yield low, high, passed
 
 
-def _least_carrying(tied: list[tuple[int, Fraction]], carried: Fraction) -> list[int]:
-    """Order of clusters of equal potential with the least sum of |charge| through the switches, then by name.
+def _least_carrying(tied: Sequence[tuple[int, Fraction]], carried: Fraction) -> list[int]:
+    """Order clusters of equal potential: least sum of |charge| through the switches, then by name.
 
-    ``carried`` is the charge from the clusters below. Above seven clusters of equal potential the order is
-    greedy: the next cluster is the one that leaves the least charge to carry on.
+    ``carried`` is the charge from the clusters below. The order is the best of all, by dynamic programming
+    over the clusters already placed. Above `_MOST_ORDERED` clusters it is greedy: the next cluster is the one
+    that leaves the least charge to carry on.
     """
-    if len(tied) <= _MOST_PERMUTED:
-
-        def load(order: tuple[tuple[int, Fraction], ...]) -> Fraction:
-            total, passed = Fraction(0), carried
-            for _, charge in order:
-                passed += charge
-                total += abs(passed)
-            return total
-
-        return [i for i, _ in min(permutations(tied), key=load)]
-    remaining, line = list(tied), []
-    while remaining:
-        following = min(remaining, key=lambda pair: abs(carried + pair[1]))
-        remaining.remove(following)
-        carried += following[1]
-        line.append(following[0])
+    if len(tied) > _MOST_ORDERED:
+        remaining, line = list(tied), []
+        while remaining:
+            following = min(remaining, key=lambda pair: abs(carried + pair[1]))
+            remaining.remove(following)
+            carried += following[1]
+            line.append(following[0])
+        return line
+    # Least sum from each set of placed clusters to the end, with the first cluster that attains it.
+    everything = (1 << len(tied)) - 1
+    onward: list[tuple[Fraction, int]] = [(Fraction(0), -1)] * (everything + 1)
+    for placed in reversed(range(everything)):
+        passed = carried + sum(charge for k, (_, charge) in enumerate(tied) if placed >> k & 1)
+        onward[placed] = min(
+            (abs(passed + charge) + onward[placed | 1 << k][0], k)
+            for k, (_, charge) in enumerate(tied)
+            if not placed >> k & 1
+        )
+    line, placed = [], 0
+    while placed != everything:
+        k = onward[placed][1]
+        line.append(tied[k][0])
+        placed |= 1 << k
     return line

@@ -29,17 +29,19 @@ class ChargeFlow:
     voltages
         Voltage of each capacitor.
     input_charges, output_charges
-        Charge taken from the input, and given to the output, in phase 1 and in phase 2; those of the output add
-        up to 1. For an inverting converter they are counted in the direction of the net flow.
+        Charge through the input, and through the output, in phase 1 and in phase 2, each counted in the
+        direction of its net flow; those of the output add up to 1, those of the input to |M|.
     network
         Clusters and switches.
     capacitor_utilisation, switch_utilisation
-        E / sum |q v| over capacitors, and 4 E / sum |q v| over switches, both in (0, 1]; 0 in a unity converter,
-        which lifts no energy. E is the energy that has to be lifted per cycle.
-    slow_limit_metric, fast_limit_metric
-        V_out^2 / (R_SSL f E_total) and V_out^2 / (R_FSL V-A_total) with capacitor energy and switch V-A product
-        optimally allotted: 2 / (sum a_c v / V_out)^2 and 1 / (2 (sum a_r v / V_out)^2); the latter is None where no switch blocks
-        voltage (unity converters).
+        E / sum |q v| over capacitors, and 4 E / sum |q v| over switches, both in (0, 1]; 0 in a unity
+        converter, which lifts no energy. E is the energy that has to be lifted per cycle.
+    slow_limit_metric
+        V_out^2 / (R_SSL f W), W = sum C v^2 / 2 the energy that the capacitors are rated for, optimally
+        allotted: 2 / (sum a_c v / V_out)^2.
+    fast_limit_metric
+        V_out^2 / (R_FSL P), P = sum v^2 / R the volt-amperes that the switches are rated for, optimally
+        allotted, at 50 % duty: 1 / (2 (sum a_r v / V_out)^2). None where no switch blocks a voltage.
     """
 
     multipliers: tuple[Fraction, ...]
@@ -59,7 +61,7 @@ class ChargeFlow:
 
     @property
     def output_evenness(self) -> Fraction:
-        """Least phase share of the output charge over one half: 1 when both phases feed it alike, 0 for one only."""
+        """Twice the lesser phase's share of the output charge: 1 when both feed it alike, 0 when one does."""
         return max(Fraction(0), 2 * min(self.output_charges))
 
 
@@ -102,8 +104,8 @@ def charge_flow(converter: Converter) -> ChargeFlow:
 def lifted_energy(ratio: Fraction) -> Fraction:
     """Energy lifted per cycle, per unit of output charge and volt of input: |port charge| x potential step.
 
-    The ports' potentials 0, 1 and M, sorted, have a middle one; the energy is the charge of an outer port times
-    its distance from the middle.
+    Of the ports' potentials 0, 1 and M one is in the middle; the energy is the charge of an outer port times
+    its distance from the middle one.
     """
     if ratio > 1:
         return ratio - 1
@@ -113,7 +115,7 @@ def lifted_energy(ratio: Fraction) -> Fraction:
 
 
 def _port_charges(converter: Converter, port: int) -> tuple[Fraction, Fraction]:
-    """Charge through input (1) or output (2) in each phase, in the direction of its net flow, per output charge."""
+    """Charge through input (1) or output (2) in each phase, in the direction of its net flow."""
     totals = [0, 0]
     for word, taken in zip(converter.words, converter.balance.charges, strict=True):
         for phase, into in ((0, taken), (1, -taken)):
