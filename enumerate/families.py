@@ -30,8 +30,8 @@ class Member:
     family
         Name of the family.
     size
-        What the family is counted by: the ladder's and Dickson's and series-parallel's N, the number of
-        stages of the others.
+        What the family is counted by: N of series-parallel, ladder and Dickson; the number of stages of the
+        others.
     detail
         What tells members of one size apart, such as a ladder's tap, and what was left out and why.
     converter
@@ -70,12 +70,12 @@ def series_parallel(n: int) -> Converter:
 
 
 def ladder(n: int, tap: int = 1) -> Converter:
-    """Step down to ``tap / n``: ``n`` rails one step apart, n - 1 flying capacitors that move up and down a step.
+    """Step down to ``tap / n``: rails one step apart, n - 1 flying capacitors that move up and down a step.
 
-    A rail capacitor holds each step between two rails, in both phases. The stiff ports G, O and I hold the rails
-    0, ``tap`` and ``n``, so a full column of rail capacitors between two ports would close a loop whose charge no
-    law fixes: in each column the outermost one (next to G, and next to I) is left out, which leaves n - 2. The
-    flying capacitor at that end then feeds the port directly.
+    A rail capacitor holds each step between two rails, in both phases. The stiff ports G, O and I hold the
+    rails 0, ``tap`` and ``n``, so a full column of rail capacitors between two ports would close a loop whose
+    charge no law fixes: in each column the outermost one (next to G, and next to I) is left out, which leaves
+    n - 2. The flying capacitor at that end then feeds the port directly.
 
     Raises
     ------
@@ -94,7 +94,7 @@ def ladder(n: int, tap: int = 1) -> Converter:
 
 
 def dickson(n: int) -> Converter:
-    """Step up by ``n``: n - 1 capacitors in a chain, each charged by the one before, bottoms driven alternately.
+    """Step up by ``n``: a chain of n - 1 capacitors, each charged by the one before, bottoms alternate.
 
     Raises
     ------
@@ -111,7 +111,7 @@ def dickson(n: int) -> Converter:
 
 
 def fibonacci(stages: int) -> Converter:
-    """Step up by the Fibonacci number F(stages + 1) of 1, 2, 3, 5, ...: each capacitor is lifted by the one before.
+    """Step up by 2, 3, 5, 8, ...: each capacitor charges the next one and lifts the one after it.
 
     Raises
     ------
@@ -122,11 +122,12 @@ def fibonacci(stages: int) -> Converter:
     before, number = 1, 2
     for _ in range(stages - 1):
         before, number = number, before + number
+    tops = ["I", *(f"y{k}" for k in range(1, stages)), "O"]
     words = []
     for k in range(1, stages + 1):
-        # While k charges from ground, k - 1 is lifted, and their tops meet at y(k-1); k + 1 is lifted by k's top.
-        low = ("I" if k == 1 else f"y{k - 1}", "G")
-        high = ("O" if k == stages else f"y{k}", "I" if k == 1 else f"y{k - 2}" if k > 2 else "I")
+        # While k charges from ground, k - 1 is lifted; the top of k - 1 charges k and lifts k + 1.
+        low = (tops[k - 1], "G")
+        high = (tops[k], tops[max(k - 2, 0)])
         words.append((*low, *high) if k % 2 else (*high, *low))
     return _built(words, Fraction(number), "Fibonacci")
 
@@ -167,15 +168,17 @@ def _series_parallels(most: int) -> Iterator[tuple[int, str, Converter]]:
         yield n, f"N = {n}", series_parallel(n)
 
 
+_NO_RAIL = 2
+"""The ladder without a rail between its ports: it has no rail capacitor."""
+_LADDER_NOTE = "; the outermost rail capacitor of each column is left out: redundant between two stiff ports"
+
+
 def _ladders(most: int) -> Iterator[tuple[int, str, Converter]]:
     for n in count(2):
         if 2 * n - 3 > most:
             return
         for tap in range(1, n // 2 + 1):  # upside down, tap k is tap n - k
-            ends = (tap > 1) + (n - tap > 1)
-            which = ("", "; the rail capacitor at one end is", "; the rail capacitors at both ends are")[ends]
-            note = f"{which} left out: redundant between two stiff ports" if ends else ""
-            yield n, f"N = {n}, tap {tap}{note}", ladder(n, tap)
+            yield n, f"N = {n}, tap {tap}{_LADDER_NOTE if n > _NO_RAIL else ''}", ladder(n, tap)
 
 
 def _dicksons(most: int) -> Iterator[tuple[int, str, Converter]]:
@@ -185,12 +188,16 @@ def _dicksons(most: int) -> Iterator[tuple[int, str, Converter]]:
 
 def _fibonaccis(most: int) -> Iterator[tuple[int, str, Converter]]:
     for stages in range(1, most + 1):
-        yield stages, f"{stages} stages", fibonacci(stages)
+        yield stages, _stages(stages), fibonacci(stages)
 
 
 def _doubler_chains(most: int, *, alternate: bool = False) -> Iterator[tuple[int, str, Converter]]:
     for stages in range(2 if alternate else 1, (most + 1) // 2 + 1):
-        yield stages, f"{stages} stages", doubler_chain(stages, alternate=alternate)
+        yield stages, _stages(stages), doubler_chain(stages, alternate=alternate)
+
+
+def _stages(number: int) -> str:
+    return f"{number} stage{'s' if number > 1 else ''}"
 
 
 _FAMILIES = (
