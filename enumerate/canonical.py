@@ -7,8 +7,8 @@ followed by the words with internal nodes named in their order of appearance.
 Up to six capacitors the search tries every order of tied ones, as `capmuster.enumerate.canonicalbatch` does.
 Above that ties are split by colour refinement, as in McKay, "Practical graph isomorphism", Congressus
 Numerantium 30, 1981: two capacitors differ where their plates meet different company. A tie that remains is
-broken in every way in turn. An irreducible converter has no symmetry that keeps its phases (a null space of
-one dimension leaves no room for one), so this seldom branches; twenty tied capacitors would have 20! orders.
+broken in every way in turn, which seldom happens: a null space of one dimension leaves a converter no
+symmetry, unless a capacitor holds no voltage. Without refinement twenty tied capacitors had 20! orders.
 """
 
 from __future__ import annotations
