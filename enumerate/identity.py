@@ -29,7 +29,7 @@ _HASH_DIGITS = 12
 # Digits by number of capacitors: the least that hold the largest number.
 _DIGITS = {1: 2, 2: 3, 3: 5, 4: 7, 5: 10, 6: 12}
 _FORM = re.compile(rf"([1-9][0-9]{{0,3}})-([{ALPHABET}]+)\Z")
-_ACCEPTED = "an id such as '1-1b', as list prints it"
+_ACCEPTED = "an id such as '1-0h', as list prints it"
 
 
 def wiring_number(words: NDArray[np.integer], m1: NDArray[np.integer]) -> NDArray[np.uint64]:
@@ -96,8 +96,8 @@ def words_of_id(text: str) -> tuple[Word, ...] | None:
     wanted = _DIGITS.get(n, _HASH_DIGITS)
     if len(digits) != wanted:
         raise CapmusterError(
-            f"id '{shortened(text)}' has {len(digits)} digits after its first part",
-            accepted=f"{wanted} of them for {n} capacitor{'s' if n > 1 else ''}",
+            f"id '{shortened(text)}' has {len(digits)} digits after the dash",
+            accepted=f"{wanted} for {n} capacitor{'s' if n > 1 else ''}",
         )
     if n > MOST_READABLE:
         return None

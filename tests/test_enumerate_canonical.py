@@ -74,7 +74,7 @@ def test_forty_capacitors(converter):
 
 
 def by_definition(words):
-    """Take the least of invariants, then words with nodes named as they appear, over all orders and phases."""
+    """Take the least of invariants, then words, nodes named as they appear, over all orders and phases."""
     balance = analyse(words)
     best = None
     for first, order in product((0, 1), permutations(range(len(words)))):
