@@ -1,14 +1,15 @@
 """Attachments of a skeleton: which of three unnamed ports each outer plate meets.
 
-An attachment is a string over three letters, one per outer plate. Restricted growth (a new letter is the next
-one) absorbs the names of the ports; a string is kept only if it is the least of its orbit under the skeleton's
-symmetries. No pair of cells is ever compared.
+An attachment is a string over three letters, one per outer plate, read as a number in base 3. Restricted
+growth (a new letter is the next one) absorbs the names of the ports; a string is kept only if it is the
+least of its orbit under the skeleton's symmetries. No pair of cells is ever compared.
 """
 
 from __future__ import annotations
 
 from dataclasses import dataclass
 from functools import lru_cache
+from itertools import permutations
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -16,93 +17,106 @@ import numpy as np
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
-    from capmuster.enumerate.skeletons import Skeleton
+    from capmuster.enumerate.skeletons import SkeletonTable
 
-_PORTS = 3
-_IDENTITY = (0, 1, 2)
+N_PORTS = 3
+EXCHANGES = np.array(list(permutations(range(N_PORTS))), dtype=np.int8)
+"""Ways to rename the ports: row k gives the images of A, B, C; row 0 is the identity."""
+_EXCHANGE_OF_CODE = np.zeros(N_PORTS**N_PORTS, dtype=np.int8)
+_EXCHANGE_OF_CODE[EXCHANGES @ np.array([9, 3, 1])] = np.arange(len(EXCHANGES))
 
 
 @dataclass(frozen=True, slots=True)
 class Attachments:
-    """The attachments of one skeleton, one per cell.
+    """The attachments of one skeleton, one per cell; all three ports are met.
 
     Attributes
     ----------
-    places
-        Outer places in the flattened (n, 4) words, shape (s,).
     letters
-        Port 0, 1 or 2 at each outer place, shape (N, s).
-    port_charges
-        Charge that each port sends per cycle, shape (N, 3).
+        Shape (s, N), int8: port 0, 1 or 2 at each outer place, in the order of places.
+    values
+        Shape (N,), int32: the same strings as numbers in base 3, first letter most significant.
     stabiliser
-        Number of symmetries that leave the cell as it is, shape (N,).
+        Shape (N,), int8: number of symmetries that leave the cell as it is.
     mirror
-        For each cell the port exchange that its symmetries allow, as ``(image of A, of B, of C)``, shape (N, 3);
-        the identity where there is none.
+        Shape (N,), int8: index in `EXCHANGES` of the port exchange that its symmetries allow.
     """
 
-    places: NDArray[np.int64]
     letters: NDArray[np.int8]
-    port_charges: NDArray[np.int64]
-    stabiliser: NDArray[np.int64]
+    values: NDArray[np.int32]
+    stabiliser: NDArray[np.int8]
     mirror: NDArray[np.int8]
 
+    def take(self, columns: NDArray[np.intp] | slice) -> Attachments:
+        """Return the chosen attachments."""
+        return Attachments(
+            self.letters[:, columns], self.values[columns], self.stabiliser[columns], self.mirror[columns]
+        )
 
-def attachments(skeleton: Skeleton) -> Attachments:
-    """List every attachment with at least two ports that exchange charge, one per cell."""
-    words = skeleton.words.reshape(-1)
-    places = np.flatnonzero(words == 0)
-    signs = np.where(np.isin(places % 4, (0, 3)), 1, -1)
-    weights = signs * skeleton.charges[places // 4]
-    letters = _strings(tuple((places[1:] // 2 == places[:-1] // 2).tolist()))
-    port_charges = np.stack([(letters == port) @ weights for port in range(_PORTS)], axis=1)
-    exchanging = np.any(port_charges != 0, axis=1)
-    letters, port_charges = letters[exchanging], port_charges[exchanging]
-    stabiliser = np.ones(len(letters), dtype=np.int64)
-    mirror = np.tile(np.array(_IDENTITY, dtype=np.int8), (len(letters), 1))
-    kept = np.ones(len(letters), dtype=bool)
-    values = _values(letters)
-    slot_of = np.full(len(words), -1)
+
+def outer_places(words: NDArray[np.int8]) -> NDArray[np.intp]:
+    """Places of the flattened (n, 4) words of a skeleton that meet a port."""
+    return np.flatnonzero(words.reshape(-1) == 0)
+
+
+def attachments(skeletons: SkeletonTable, row: int) -> Attachments:
+    """List every attachment of one skeleton, one per cell."""
+    places = outer_places(skeletons.words[row])
+    letters, values = _strings(tuple((places[1:] // 2 == places[:-1] // 2).tolist()))
+    stabiliser = np.ones(len(values), dtype=np.int8)
+    mirror = np.zeros(len(values), dtype=np.int8)
+    if skeletons.order[row] == 1:
+        return Attachments(letters, values, stabiliser, mirror)
+    kept = np.ones(len(values), dtype=bool)
+    slot_of = np.full(4 * skeletons.n, -1)
     slot_of[places] = np.arange(len(places))
-    for symmetry in skeleton.symmetries[1:]:
+    for moved_to in skeletons.symmetries(row)[1:]:
         moved = np.empty_like(letters)
-        moved[:, slot_of[symmetry.places[places]]] = letters
-        renamed, new_names = _restricted(moved)
-        moved_values = _values(renamed)
+        moved[slot_of[moved_to[places]]] = letters
+        moved_values, exchange = _restricted(moved)
         kept &= values <= moved_values
         fixed = values == moved_values
         stabiliser += fixed
-        exchanged = fixed & np.any(new_names != np.array(_IDENTITY), axis=1)
-        mirror[exchanged] = new_names[exchanged]
-    return Attachments(places, letters[kept], port_charges[kept], stabiliser[kept], mirror[kept])
+        mirror = np.where(fixed & (exchange > 0), exchange, mirror)
+    return Attachments(letters[:, kept], values[kept], stabiliser[kept], mirror[kept])
 
 
-@lru_cache(maxsize=256)
-def _strings(paired: tuple[bool, ...]) -> NDArray[np.int8]:
-    """Restricted-growth strings that use all three letters, shape (N, len(paired) + 1).
+@lru_cache(maxsize=64)
+def _strings(paired: tuple[bool, ...]) -> tuple[NDArray[np.int8], NDArray[np.int32]]:
+    """Restricted-growth strings that use all three letters, shape (len(paired) + 1, N), and their values.
 
     ``paired[k]`` says that places k and k + 1 are the two plates of one capacitor in one phase: their letters
     differ.
     """
-    strings = np.zeros((1, 1), dtype=np.int8)
+    most = np.zeros(1, dtype=np.int8)  # largest letter so far
+    last = np.zeros(1, dtype=np.int8)
+    values = np.zeros(1, dtype=np.int32)
+    letter = np.arange(N_PORTS, dtype=np.int8)[:, None]
     for differs in paired:
-        letter = np.arange(_PORTS, dtype=np.int8)
-        allowed = letter <= strings.max(axis=1, keepdims=True) + 1
+        allowed = letter <= most + 1
         if differs:
-            allowed &= letter != strings[:, -1:]
-        row, column = np.nonzero(allowed)
-        strings = np.concatenate([strings[row], letter[column, None]], axis=1)
-    return strings[strings.max(axis=1) == _PORTS - 1]
+            allowed &= letter != last
+        row, column = np.nonzero(allowed.T)
+        last = column.astype(np.int8)
+        most = np.maximum(most[row], last)
+        values = values[row] * np.int32(N_PORTS) + last
+    values = values[most == N_PORTS - 1]
+    letters = np.empty((len(paired) + 1, len(values)), dtype=np.int8)
+    rest = values
+    for slot in range(len(paired), -1, -1):
+        quotient = rest // N_PORTS
+        letters[slot] = rest - N_PORTS * quotient
+        rest = quotient
+    return letters, values
 
 
-def _values(letters: NDArray[np.int8]) -> NDArray[np.int64]:
-    """Strings as numbers in base 3, first letter most significant."""
-    powers = _PORTS ** np.arange(letters.shape[1] - 1, -1, -1, dtype=np.int64)
-    return letters.astype(np.int64) @ powers
-
-
-def _restricted(letters: NDArray[np.int8]) -> tuple[NDArray[np.int8], NDArray[np.int8]]:
-    """Rename letters in their order of appearance; also return the new name of each letter, shape (N, 3)."""
-    first = np.stack([np.argmax(letters == port, axis=1) for port in range(_PORTS)], axis=1)
-    new_names = np.argsort(np.argsort(first, axis=1), axis=1).astype(np.int8)
-    return np.take_along_axis(new_names, letters.astype(np.intp), axis=1), new_names
+def _restricted(letters: NDArray[np.int8]) -> tuple[NDArray[np.int32], NDArray[np.int8]]:
+    """Values of strings, letters renamed in order of appearance, and the renamings in `EXCHANGES`."""
+    first = np.stack([np.argmax(letters == port, axis=0) for port in range(N_PORTS)])
+    new_names = np.argsort(np.argsort(first, axis=0), axis=0).astype(np.int8)
+    renamed = np.take_along_axis(new_names, letters.astype(np.intp), axis=0)
+    values = np.zeros(letters.shape[1], dtype=np.int32)
+    for letter in renamed:
+        values = values * np.int32(N_PORTS) + letter
+    code = np.array([9, 3, 1]) @ new_names
+    return values, _EXCHANGE_OF_CODE[code]

@@ -1,7 +1,8 @@
 """The complete census of irreducible cells, as structure-of-arrays tables.
 
-Everything that a skeleton fixes is computed once; ports, charges and potentials of all its attachments follow in
-a few matrix products on exact small integers.
+A cell has an address: the number of its skeleton, and its attachment as a number. Everything else follows
+from the address in a few array operations on exact small integers, so that is what is stored and passed
+around.
 """
 
 from __future__ import annotations
@@ -12,21 +13,52 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from capmuster.enumerate.attachments import attachments
+from capmuster.enumerate.attachments import EXCHANGES, N_PORTS, attachments
 from capmuster.enumerate.errors import CapmusterError
+from capmuster.enumerate.laws import laws
 from capmuster.enumerate.skeletons import skeletons
 
 if TYPE_CHECKING:
-    from collections.abc import Callable, Iterator
-
     from numpy.typing import NDArray
 
-    from capmuster.enumerate.attachments import Attachments
-    from capmuster.enumerate.skeletons import Skeleton
-
-CENSUS_REACH = 4
+CENSUS_REACH = 5
 """Most flying capacitors that the census lists."""
-_N_PORTS = 3
+_ROWS_AT_ONCE = 1 << 16
+
+
+@dataclass(frozen=True, slots=True)
+class Addresses:
+    """Where N cells stand in the census of ``n`` capacitors.
+
+    Attributes
+    ----------
+    n
+        Number of flying capacitors.
+    skeleton
+        Shape (N,), int32: row in `capmuster.enumerate.skeletons.skeletons`.
+    attachment
+        Shape (N,), int32: port of each outer place as a digit in base 3, first place most significant.
+    stabiliser
+        Shape (N,), int8: number of renamings that leave the cell as it is.
+    mirror
+        Shape (N,), int8: row of `EXCHANGES`, where its symmetries send ports A, B, C.
+    """
+
+    n: int
+    skeleton: NDArray[np.int32]
+    attachment: NDArray[np.int32]
+    stabiliser: NDArray[np.int8]
+    mirror: NDArray[np.int8]
+
+    def __len__(self) -> int:
+        """Count the cells."""
+        return len(self.skeleton)
+
+    def take(self, rows: NDArray[np.bool_] | NDArray[np.intp] | slice) -> Addresses:
+        """Return the chosen rows."""
+        return Addresses(
+            self.n, self.skeleton[rows], self.attachment[rows], self.stabiliser[rows], self.mirror[rows]
+        )
 
 
 @dataclass(frozen=True, slots=True)
@@ -42,8 +74,8 @@ class CellTable:
     port_charges
         Shape (N, 3), int32: charge that ports A, B, C send per cycle; one is zero in a unity cell.
     potentials
-        Shape (N, 2, n + 2), int32: potentials of the vertices of phase 1 and 2, up to one positive or negative
-        factor and one constant per cell; unused vertices are 0.
+        Shape (N, 2, n + 2), int32: potentials of the vertices of phase 1 and 2, up to one positive or
+        negative factor and one constant per cell; unused vertices are 0.
     nodes
         Shape (N, 2), int8: internal nodes of phase 1 and 2.
     stabiliser
@@ -61,13 +93,13 @@ class CellTable:
     mirror: NDArray[np.int8]
 
     def __len__(self) -> int:
-        """Number of cells."""
+        """Count the cells."""
         return len(self.words)
 
     @property
     def n(self) -> int:
         """Number of flying capacitors."""
-        return self.words.shape[1]
+        return int(self.words.shape[1])
 
     def take(self, rows: NDArray[np.bool_] | NDArray[np.intp] | slice) -> CellTable:
         """Return the chosen rows as a table."""
@@ -76,7 +108,7 @@ class CellTable:
     @property
     def unity(self) -> NDArray[np.bool_]:
         """Where one port charge is zero, shape (N,)."""
-        return np.any(self.port_charges == 0, axis=1)
+        return np.asarray(np.any(self.port_charges == 0, axis=1))
 
     @property
     def voltages(self) -> NDArray[np.int32]:
@@ -90,7 +122,7 @@ class CellTable:
     @property
     def degenerate(self) -> NDArray[np.bool_]:
         """Where some capacitor holds no voltage, shape (N,)."""
-        return np.any(self.voltages == 0, axis=1)
+        return np.asarray(np.any(self.voltages == 0, axis=1))
 
     @property
     def triples(self) -> NDArray[np.int32]:
@@ -100,14 +132,11 @@ class CellTable:
         return np.asarray(magnitudes // divisor)
 
 
-def concatenate(tables: list[CellTable]) -> CellTable:
-    """Put tables of the same number of capacitors behind each other."""
-    return CellTable(*(np.concatenate([getattr(t, name) for t in tables]) for name in CellTable.__slots__))
-
-
 @lru_cache(maxsize=CENSUS_REACH)
 def census(n: int) -> CellTable:
     """Return every irreducible cell of exactly ``n`` flying capacitors, degenerate and unity cells included.
+
+    Five capacitors take seconds and half a gigabyte; `capmuster.enumerate.store` keeps them in a file.
 
     Raises
     ------
@@ -115,80 +144,88 @@ def census(n: int) -> CellTable:
         When ``n`` is beyond the reach of the census.
     """
     check_reach(n)
-    return concatenate(list(cells_by_skeleton(n)))
+    return cells_at(addresses(n))
 
 
-def check_reach(n: int) -> None:
+def check_reach(n: int, most: int = CENSUS_REACH) -> None:
     """Refuse a number of capacitors that the census does not reach.
 
     Raises
     ------
     CapmusterError
-        When it is below 1 or above `CENSUS_REACH`.
+        When it is below 1 or above ``most``.
     """
-    if not 1 <= n <= CENSUS_REACH:
-        raise CapmusterError(f"capacitors: {n} is beyond the census", accepted=f"1 to {CENSUS_REACH}")
+    if not 1 <= n <= most:
+        raise CapmusterError(f"capacitors: {n} is beyond the census", accepted=f"1 to {most}")
 
 
-def cells_by_skeleton(n: int, progress: Callable[[int], None] = lambda _: None) -> Iterator[CellTable]:
-    """Yield one table per skeleton; ``progress`` is told the number of cells so far."""
-    done = 0
-    for skeleton in skeletons(n):
-        table = cells_of(skeleton, attachments(skeleton))
-        done += len(table)
-        progress(done)
-        if len(table):
-            yield table
-
-
-def cells_of(skeleton: Skeleton, outer: Attachments) -> CellTable:
-    """Work out charges and potentials of all attachments of one skeleton."""
-    n, rows = skeleton.n, len(outer.letters)
-    flat = np.tile((skeleton.words + (_N_PORTS - 1)).reshape(-1), (rows, 1))
-    flat[:, outer.places] = outer.letters
-    words = flat.reshape(rows, n, 4)
-
-    # U is orthogonal to the port charges: U_A = 0, U_B = g_C, U_C = -g_B, times the determinant that the
-    # internal potentials are divided by.
-    g = outer.port_charges
-    port_potentials = np.stack([np.zeros(rows, np.int64), g[:, 2], -g[:, 1]], axis=1)
-    inverse, determinant = _left_inverse(skeleton)
-    signs = np.zeros((n, len(outer.places)))
-    for slot, place in enumerate(outer.places):
-        signs[place // 4, slot] = -1 if place % 4 in (0, 3) else 1
-    outer_potentials = np.take_along_axis(port_potentials, outer.letters.astype(np.intp), axis=1).astype(
-        np.float64
-    )
-    internal = np.rint(outer_potentials @ (inverse @ signs).T).astype(np.int64)
-    potentials = np.zeros((rows, 2, n + 2), dtype=np.int64)
-    potentials[:, :, :_N_PORTS] = (determinant * port_potentials)[:, None, :]
-    potentials[:, 0, _N_PORTS : _N_PORTS + skeleton.m1] = internal[:, : skeleton.m1]
-    potentials[:, 1, _N_PORTS : _N_PORTS + skeleton.m2] = internal[:, skeleton.m1 :]
-    return CellTable(
-        words=words,
-        charges=np.tile(skeleton.charges.astype(np.int32), (rows, 1)),
-        port_charges=g.astype(np.int32),
-        potentials=potentials.astype(np.int32),
-        nodes=np.tile(np.array([skeleton.m1, skeleton.m2], dtype=np.int8), (rows, 1)),
-        stabiliser=outer.stabiliser.astype(np.int32),
-        mirror=outer.mirror,
+def addresses(n: int) -> Addresses:
+    """List the cells in which two or three ports exchange charge, skeleton by skeleton."""
+    table = skeletons(n)
+    law = laws(table)
+    parts = []
+    for row in range(len(table)):
+        outer = attachments(table, row)
+        weights = law.weights[row, : law.slots[row]]
+        charges = [weights @ (outer.letters == port) for port in (0, 1)]
+        exchanging = (charges[0] != 0) | (charges[1] != 0)
+        parts.append((row, outer.values[exchanging], outer.stabiliser[exchanging], outer.mirror[exchanging]))
+    return Addresses(
+        n,
+        np.repeat(np.arange(len(table), dtype=np.int32), [len(part[1]) for part in parts]),
+        np.concatenate([part[1] for part in parts]),
+        np.concatenate([part[2] for part in parts]),
+        np.concatenate([part[3] for part in parts]),
     )
 
 
-def _left_inverse(skeleton: Skeleton) -> tuple[NDArray[np.float64], int]:
-    """Integer matrix and divisor that turn one residual voltage per capacitor into internal potentials.
+def cells_at(where: Addresses) -> CellTable:
+    """Work out wiring, charges and potentials of cells by their addresses."""
+    n, rows = where.n, len(where)
+    table = skeletons(n)
+    law = laws(table)
+    result = CellTable(
+        words=np.empty((rows, n, 4), np.int8),
+        charges=table.charges[where.skeleton].astype(np.int32),
+        port_charges=np.empty((rows, N_PORTS), np.int32),
+        potentials=np.zeros((rows, 2, n + 2), np.int32),
+        nodes=table.nodes[where.skeleton],
+        stabiliser=where.stabiliser.astype(np.int32),
+        mirror=EXCHANGES[where.mirror],
+    )
+    slots = law.weights.shape[1]
+    for start in range(0, rows, _ROWS_AT_ONCE):
+        part = slice(start, start + _ROWS_AT_ONCE)
+        s = where.skeleton[part]
+        letters = _letters(where.attachment[part], law.slots[s], slots)
+        slot = law.slot_of[s].astype(np.intp)
+        ports = np.take_along_axis(letters, np.maximum(slot, 0), axis=1)
+        inner = table.words[s].reshape(len(s), 4 * n) + np.int8(N_PORTS - 1)
+        result.words[part] = np.where(slot < 0, inner, ports).reshape(len(s), n, 4)
 
-    Kirchhoff's voltage law gives one line per capacitor, ``[D1', -D2'] x = r``, one more than there are unknowns;
-    the line of the last capacitor follows from the others and is left out.
-    """
-    n = skeleton.n
-    law = np.zeros((n, n - 1))
-    for column in range(4):
-        sign = 1 if column in (0, 3) else -1
-        for i, node in enumerate(skeleton.words[:, column]):
-            if node:
-                law[i, node - 1 + (skeleton.m1 if column > 1 else 0)] += sign
-    determinant = round(np.linalg.det(law[:-1]))
-    inverse = np.zeros((n - 1, n))
-    inverse[:, :-1] = np.rint(np.linalg.inv(law[:-1]) * determinant)
-    return inverse, determinant
+        # U is orthogonal to the port charges: U_A = 0, U_B = g_C, U_C = -g_B, times the determinant that the
+        # internal potentials are divided by.
+        weights = law.weights[s]
+        g = np.stack([((letters == port) * weights).sum(axis=1) for port in range(N_PORTS)], axis=1)
+        u = np.stack([np.zeros(len(s), np.int64), g[:, 2], -g[:, 1]], axis=1)
+        result.port_charges[part] = g
+        result.potentials[part, :, :N_PORTS] = (law.determinant[s, None] * u)[:, None]
+        at_places = np.take_along_axis(u, letters.astype(np.intp), axis=1)
+        internal = np.einsum("ris,rs->ri", law.potentials[s], at_places)
+        for node in range(n - 1):
+            # Internal nodes of phase 1 come first; how many there are depends on the skeleton.
+            in_second = node >= result.nodes[part, 0]
+            vertex = N_PORTS + node - np.where(in_second, result.nodes[part, 0], 0)
+            result.potentials[start + np.arange(len(s)), in_second.astype(np.intp), vertex] = internal[
+                :, node
+            ]
+    return result
+
+
+def _letters(values: NDArray[np.int32], slots: NDArray[np.int8], most: int) -> NDArray[np.int8]:
+    """Digits in base 3, first place most significant, shape (N, most); places beyond a row's slots hold 0."""
+    letters = np.zeros((len(values), most), dtype=np.int8)
+    rest = values * N_PORTS ** (most - slots.astype(np.int64))
+    for slot in range(most - 1, -1, -1):
+        rest, letters[:, slot] = np.divmod(rest, N_PORTS)
+    return letters

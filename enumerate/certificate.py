@@ -1,34 +1,36 @@
 """The certificate of completeness: the census counted a second time, by a route that lists nothing.
 
-The number of *labelled* cells (capacitors, plates, phases and ports told apart, internal nodes not) follows from
-each skeleton by a convolution of what its outer plates bring to the port charges. The orbits of the listed cells
-must add up to it, for every triple. Both routes share the list of skeletons, which is counted on its own by
-`capmuster.enumerate.skeletoncount`.
+The number of *labelled* cells (capacitors, plates, phases and ports told apart, internal nodes not) follows
+from each skeleton by a convolution of what its outer plates bring to the port charges. The orbits of the
+listed cells must add up to it, for every triple. Both routes share the list of skeletons, which is counted
+on its own by `capmuster.enumerate.skeletoncount`.
 """
 
 from __future__ import annotations
 
 from collections import Counter
 from dataclasses import dataclass
-from math import factorial, gcd
-from typing import TYPE_CHECKING, TypeAlias
+from typing import TYPE_CHECKING
 
 import numpy as np
 
-from capmuster.enumerate.census import CENSUS_REACH, census
-from capmuster.enumerate.skeletoncount import labelled_skeletons
+from capmuster.enumerate.attached import tally_cells
+from capmuster.enumerate.census import check_reach
+from capmuster.enumerate.skeletoncount import MOST_CAPACITORS, labelled_skeletons
 from capmuster.enumerate.skeletons import skeletons
+from capmuster.enumerate.tally import Tally, labellings, triple_of
 
 if TYPE_CHECKING:
     from collections.abc import Mapping
 
     from numpy.typing import NDArray
 
-    from capmuster.enumerate.skeletons import Skeleton
+    from capmuster.enumerate.skeletons import SkeletonTable
+    from capmuster.enumerate.tally import Triple
 
-Triple: TypeAlias = tuple[int, int, int]
-_PORT_ORDERS = 6
-_PHASE_ORDERS = 2
+COUNT_REACH = MOST_CAPACITORS
+"""Most flying capacitors that are counted."""
+_BOTH_PLATES = 64
 
 
 @dataclass(frozen=True, slots=True)
@@ -78,72 +80,91 @@ class Certificate:
 
 
 def certify(n: int) -> Certificate:
-    """Count the census of ``n`` capacitors both ways.
+    """Count the census of ``n`` capacitors both ways; six take a minute.
 
     Raises
     ------
     CapmusterError
-        When ``n`` is beyond the reach of the census.
+        When ``n`` is beyond the reach of the count.
     """
-    table = census(n)
-    table = table.take(~table.unity)
-    cells: Counter[Triple] = Counter()
-    listed: Counter[Triple] = Counter()
-    triples, row_of = np.unique(table.triples, axis=0, return_inverse=True)
-    orbits = labellings(n) * _PORT_ORDERS // table.stabiliser.astype(np.int64)
-    for k, (a, b, c) in enumerate(triples.tolist()):
-        cells[a, b, c] = int(np.count_nonzero(row_of == k))
-        listed[a, b, c] = int(orbits[row_of == k].sum())
-    counted: Counter[Triple] = Counter()
-    skeletons_listed = 0
-    for skeleton in skeletons(n):
-        orbit = labellings(n) // len(skeleton.symmetries)
-        skeletons_listed += orbit
-        for triple, strings in attachments_counted(skeleton).items():
-            counted[triple] += orbit * strings
-    return Certificate(n, cells, listed, counted, skeletons_listed, labelled_skeletons(n))
+    check_reach(n, COUNT_REACH)
+    tally = Tally.empty(n)
+    tally_cells(skeletons(n), tally)
+    return certificate_of(tally)
 
 
-def labellings(n: int) -> int:
-    """Ways to tell capacitors, plates and phases apart."""
-    return factorial(n) * 2**n * _PHASE_ORDERS
+def certificate_of(tally: Tally) -> Certificate:
+    """Hold the tally of a complete listing against the counts that list nothing."""
+    table = skeletons(tally.n)
+    return Certificate(
+        n=tally.n,
+        cells=_with_three_ports(tally.per_triple(tally.held + tally.degenerate)),
+        labelled_listed=_with_three_ports(tally.per_triple(tally.labelled)),
+        labelled_counted=labelled_cells(table),
+        skeletons_listed=int((labellings(tally.n) // table.order).sum()),
+        skeletons_counted=labelled_skeletons(tally.n),
+    )
 
 
-def attachments_counted(skeleton: Skeleton) -> Counter[Triple]:
-    """Number of port strings of a skeleton per triple, by convolution over (g_A, g_B)."""
-    steps = _steps(skeleton)
-    reach = sum(max(max(abs(a), abs(b)) for a, b in step) for step in steps)
+def _with_three_ports(counts: Mapping[Triple, int]) -> dict[Triple, int]:
+    return {triple: count for triple, count in counts.items() if triple[0]}
+
+
+def labelled_cells(table: SkeletonTable) -> dict[Triple, int]:
+    """Count the labelled cells of skeletons per triple, by convolution over (g_A, g_B).
+
+    Skeletons whose outer plates bring the same charges share one convolution; so do those in which every
+    charge has the other sign.
+    """
+    steps, which = np.unique(_steps(table), axis=0, return_inverse=True)
+    weights = np.zeros(len(steps), dtype=np.int64)
+    np.add.at(weights, which.reshape(-1), labellings(table.n) // table.order)
+    total: Counter[Triple] = Counter()
+    for step, weight in zip(steps.tolist(), weights.tolist(), strict=True):
+        for triple, strings in attachments_counted(step).items():
+            total[triple] += weight * strings
+    return dict(sorted(total.items()))
+
+
+def _steps(table: SkeletonTable) -> NDArray[np.int8]:
+    """List what each capacitor brings to the ports in each phase, sorted per skeleton, shape (S, 2 n).
+
+    An outer plate alone brings its charge, with its sign; 0 stands for none; 64 + |charge| for a capacitor
+    between two ports.
+    """
+    outer = table.words == 0
+    parts = []
+    for phase, sign in ((0, 1), (1, -1)):
+        plus, minus = outer[:, :, 2 * phase], outer[:, :, 2 * phase + 1]
+        alone = sign * table.charges * (plus.astype(np.int64) - minus)
+        parts.append(np.where(plus & minus, _BOTH_PLATES + np.abs(table.charges), alone))
+    steps = np.concatenate(parts, axis=1)
+    turned = np.where(steps < _BOTH_PLATES // 2, -steps, steps)
+    steps, turned = np.sort(steps, axis=1), np.sort(turned, axis=1)
+    differ = steps != turned
+    first = np.take_along_axis(steps - turned, differ.argmax(axis=1)[:, None], axis=1)
+    return np.where(first <= 0, steps, turned).astype(np.int8)
+
+
+def attachments_counted(steps: list[int]) -> Counter[Triple]:
+    """Count the port strings with given steps (as in ``_steps``) per triple."""
+    moves = []
+    for step in steps:
+        if step > _BOTH_PLATES // 2:
+            w = step - _BOTH_PLATES
+            moves.append([(w, -w), (-w, w), (w, 0), (-w, 0), (0, w), (0, -w)])
+        elif step:
+            moves.append([(step, 0), (0, step), (0, 0)])
+    reach = sum(max(max(abs(a), abs(b)) for a, b in move) for move in moves)
     strings = np.zeros((2 * reach + 1, 2 * reach + 1), dtype=np.int64)
     strings[reach, reach] = 1
-    for step in steps:
-        strings = sum((np.roll(strings, shift, axis=(0, 1)) for shift in step), np.zeros_like(strings))
-    return _by_triple(strings, reach)
-
-
-def _steps(skeleton: Skeleton) -> list[list[tuple[int, int]]]:
-    """What each capacitor can bring to (g_A, g_B) in each phase."""
-    steps = []
-    for word, charge in zip(skeleton.words.tolist(), skeleton.charges.tolist(), strict=True):
-        for phase, taken in ((word[:2], charge), (word[2:], -charge)):
-            plates = [weight for vertex, weight in zip(phase, (taken, -taken), strict=True) if vertex == 0]
-            if len(plates) == 1:
-                (w,) = plates
-                steps.append([(w, 0), (0, w), (0, 0)])
-            elif plates:
-                w, _ = plates
-                steps.append([(w, -w), (-w, w), (w, 0), (-w, 0), (0, w), (0, -w)])
-    return steps
-
-
-def _by_triple(strings: NDArray[np.int64], reach: int) -> Counter[Triple]:
+    for move in moves:
+        strings = sum((np.roll(strings, shift, axis=(0, 1)) for shift in move), np.zeros_like(strings))
     found: Counter[Triple] = Counter()
-    for row, column in zip(*np.nonzero(strings), strict=True):
-        a, b = int(row) - reach, int(column) - reach
+    rows, columns = np.nonzero(strings)
+    for a, b, count in zip(
+        (rows - reach).tolist(), (columns - reach).tolist(), strings[rows, columns].tolist(), strict=True
+    ):
         if a and b and a + b:
-            small, middle, large = sorted((abs(a), abs(b), abs(a + b)))
-            divisor = gcd(small, middle)
-            found[small // divisor, middle // divisor, large // divisor] += int(strings[row, column])
+            found[triple_of(a, b)] += count
     return found
-
-
-__all__ = ["CENSUS_REACH", "Certificate", "attachments_counted", "certify", "labellings"]

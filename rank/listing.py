@@ -1,8 +1,8 @@
 """Every converter of one ratio: the census as far as it is complete, family members beyond.
 
 Best first: by the product of capacitor and switch utilisation, because at a given capacitor energy and switch
-V-A product it goes with 1/sqrt(R_SSL R_FSL) and so needs no technology (the metrics of both limits, Seeman and
-Sanders 2008); then fewer flying capacitors, fewer switches, higher capacitor utilisation, id.
+V-A product it goes with 1/sqrt(R_SSL R_FSL) and so needs no technology (the metrics of both limits, Seeman
+and Sanders 2008); then fewer flying capacitors, fewer switches, higher capacitor utilisation, id.
 """
 
 from __future__ import annotations
