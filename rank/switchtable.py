@@ -62,6 +62,8 @@ class SwitchTable:
         Shape (N, 3 n + 1), int64: blocking voltage, not negative; 0 beyond `count`.
     phase
         Shape (N, 3 n + 1), int8: phase in which it is closed, 1 or 2; 0 beyond `count`.
+    vertex
+        Shape (N, 3 n + 1), int8: the vertex, of the phase in which it is closed, that it holds together.
     high, low
         Shape (N, 3 n + 1), int8: vertices, of the phase in which it is open, between which it blocks; `high` has
         the higher potential.
@@ -72,9 +74,14 @@ class SwitchTable:
     charges: NDArray[np.int64]
     blocking: NDArray[np.int64]
     phase: NDArray[np.int8]
+    vertex: NDArray[np.int8]
     high: NDArray[np.int8]
     low: NDArray[np.int8]
     count: NDArray[np.int64]
+
+    def take(self, rows: NDArray[np.bool_] | NDArray[np.intp] | slice) -> SwitchTable:
+        """Return the chosen rows as a table."""
+        return SwitchTable(*(getattr(self, name)[rows] for name in self.__slots__))
 
     @property
     def clean(self) -> NDArray[np.bool_]:
@@ -148,7 +155,7 @@ def switch_table(table: Wired) -> SwitchTable:
     if not parts:
         shape = (0, 3 * n + 1)
         empty, small = np.zeros(shape, dtype=np.int64), np.zeros(shape, dtype=np.int8)
-        return SwitchTable(empty, empty, small, small, small, np.zeros(0, dtype=np.int64))
+        return SwitchTable(empty, empty, small, small, small, small, np.zeros(0, dtype=np.int64))
     return SwitchTable(
         *(np.concatenate([getattr(part, name) for part in parts]) for name in SwitchTable.__slots__)
     )
@@ -249,6 +256,7 @@ def _compressed(found: list[_Link], n: int) -> SwitchTable:
         packed(charges, np.int64),
         packed(blocking, np.int64),
         packed(phase[column].astype(np.int64), np.int8),
+        packed(column % found[0][0].shape[1], np.int8),
         packed(high, np.int8),
         packed(low, np.int8),
         count,

@@ -1,0 +1,153 @@
+"""Every capacitor and switch of one sized candidate: class, area, value, voltage and stress."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Literal
+
+import numpy as np
+
+from capmuster.enumerate.converters import table_of
+from capmuster.rank.areas import element_areas
+from capmuster.rank.evaluation import choose_elements
+from capmuster.rank.switching import switch_network
+from capmuster.rank.switchtable import SwitchTable
+
+if TYPE_CHECKING:
+    from capmuster.enumerate.converters import ConverterTable
+    from capmuster.enumerate.wiring import Converter
+    from capmuster.rank.brief import Brief
+    from capmuster.rank.switching import SwitchNetwork
+
+
+@dataclass(frozen=True, slots=True)
+class Element:
+    """A sized capacitor or switch.
+
+    Attributes
+    ----------
+    kind
+        "capacitor" or "switch".
+    name
+        As in `capmuster.rank.switching` and in the wiring's order: C1, ..., S1, ....
+    nodes
+        Names of its two nodes; of a switch the positive one first while it blocks.
+    phase
+        Phase in which a switch is closed; None for a capacitor.
+    device
+        Name of its class.
+    series
+        Devices of the class in series.
+    area
+        Area of all of them [mm2].
+    value
+        Capacitance [F] or on-resistance [ohm] of all of them.
+    multiplier
+        a_c or a_r.
+    voltage
+        Voltage that it must stand [V].
+    rating
+        What it stands, derated [V].
+    """
+
+    kind: Literal["capacitor", "switch"]
+    name: str
+    nodes: tuple[str, str]
+    phase: int | None
+    device: str
+    series: int
+    area: float
+    value: float
+    multiplier: float
+    voltage: float
+    rating: float
+
+    @property
+    def stress(self) -> float:
+        """Voltage over rating [1]."""
+        return self.voltage / self.rating
+
+
+def elements_of(
+    converter: Converter, brief: Brief, capacitor_area: float, switching_area: float
+) -> tuple[Element, ...]:
+    """Size every element of a converter.
+
+    Parameters
+    ----------
+    converter
+        The converter.
+    brief
+        Its use and technology.
+    capacitor_area
+        Area of all capacitors [mm2].
+    switching_area
+        Area of all switches that carry charge [mm2].
+    """
+    table = table_of([converter])
+    network = switch_network(converter)
+    chosen = choose_elements(table, network_table(table, network), brief)
+    technology = brief.technology
+    capacitor_areas = element_areas(chosen.capacitor_weights, np.array([capacitor_area]))[0]
+    switch_areas = element_areas(
+        chosen.switch_weights, np.array([switching_area]), smallest=chosen.switch_choice.cost
+    )[0]
+    found = []
+    plate_of = {plate: cluster.name for cluster in network.clusters for plate in cluster.plates}
+    for i, area in enumerate(capacitor_areas.tolist()):
+        device = technology.capacitors[int(chosen.capacitor_choice.index[0, i])]
+        series = int(chosen.capacitor_choice.series[0, i])
+        found.append(
+            Element(
+                kind="capacitor",
+                name=f"C{i + 1}",
+                nodes=(plate_of[i, 1], plate_of[i, -1]),
+                phase=None,
+                device=device.name,
+                series=series,
+                area=area,
+                value=area * device.density / series**2,
+                multiplier=float(abs(table.charges[0, i] / table.port_charges[0, 2])),
+                voltage=float(chosen.ratings.capacitors[0, i]),
+                rating=series * device.rating * technology.capacitor_derating,
+            )
+        )
+    for j, (switch, area) in enumerate(zip(network.switches, switch_areas.tolist(), strict=True)):
+        transistor = technology.switches[int(chosen.switch_choice.index[0, j])]
+        series = int(chosen.switch_choice.series[0, j])
+        found.append(
+            Element(
+                kind="switch",
+                name=switch.name,
+                nodes=switch.nodes,
+                phase=switch.phase,
+                device=transistor.name,
+                series=series,
+                area=area,
+                value=transistor.resistance * series**2 / area,
+                multiplier=float(switch.multiplier),
+                voltage=float(chosen.ratings.switches[0, j]),
+                rating=series * transistor.rating * technology.switch_derating,
+            )
+        )
+    return tuple(found)
+
+
+def network_table(table: ConverterTable, network: SwitchNetwork) -> SwitchTable:
+    """Write the exact switches of the one converter of a table as a switch table, in their order."""
+    output, scale = abs(int(table.port_charges[0, 2])), int(table.scale[0])
+    switches = network.switches
+    clusters = [[network.clusters[k] for k in switch.clusters] for switch in switches]
+
+    def small(values: list[int]) -> np.ndarray[tuple[int, int], np.dtype[np.int8]]:
+        return np.array([values], dtype=np.int8)
+
+    return SwitchTable(
+        charges=np.array([[int(s.multiplier * output) for s in switches]], dtype=np.int64),
+        blocking=np.array([[int(s.blocking_voltage * scale) for s in switches]], dtype=np.int64),
+        phase=small([s.phase for s in switches]),
+        vertex=small([pair[0].vertices[s.phase - 1] for s, pair in zip(switches, clusters, strict=True)]),
+        high=small([pair[0].vertices[2 - s.phase] for s, pair in zip(switches, clusters, strict=True)]),
+        low=small([pair[1].vertices[2 - s.phase] for s, pair in zip(switches, clusters, strict=True)]),
+        count=np.array([len(switches)]),
+    )

@@ -1,0 +1,108 @@
+"""The shortlist as CSV, JSON and Markdown."""
+
+from __future__ import annotations
+
+import json
+from dataclasses import asdict
+from typing import TYPE_CHECKING
+
+from capmuster.rank.quantity import format_quantity
+from capmuster.rank.shortlist import COLUMNS
+from capmuster.rank.summary import assumptions, verdict
+
+if TYPE_CHECKING:
+    from capmuster.rank.shortlist import Column, Shortlist
+
+_UNITS = {"mm2": "mm²", "S/mm2": "S/mm²", "ohm": "Ω", "1": "%"}
+
+
+def to_csv(shortlist: Shortlist) -> bytes:
+    """One row per candidate; version and fingerprints in the last columns."""
+    frame = shortlist.frame.assign(**shortlist.provenance)
+    return frame.to_csv(index=False, lineterminator="\n").encode()
+
+
+def to_json(shortlist: Shortlist) -> bytes:
+    """Everything: the job, the search, the table with its units, and each candidate's elements."""
+    rows = json.loads(shortlist.frame.to_json(orient="records", double_precision=15))
+    for k, row in enumerate(rows):
+        row["families"] = list(shortlist.families(k))
+        row["elements"] = [{**asdict(element), "stress": element.stress} for element in shortlist.elements(k)]
+    gain = shortlist.gain_over_family
+    content = {
+        "provenance": shortlist.provenance,
+        "assumptions": dict(assumptions(shortlist.brief)),
+        "cautions": shortlist.cautions,
+        "search": {
+            "complete_up_to": shortlist.pool.complete_up_to,
+            "considered": shortlist.pool.considered,
+            "candidates": len(shortlist.pool),
+            "left_out": shortlist.pool.left_out,
+            "best_family_place": shortlist.best_family_place,
+            "gain_over_family": gain,
+            "included": [asdict(one) for one in shortlist.included],
+        },
+        "units": {column.name: column.unit for column in COLUMNS},
+        "candidates": rows,
+    }
+    return (json.dumps(content, ensure_ascii=False, indent=1) + "\n").encode()
+
+
+def to_markdown(shortlist: Shortlist) -> bytes:
+    """Read in a review: assumptions, verdict, the table, each candidate's elements, cautions."""
+    lines = [f"# Shortlist: {_escaped(shortlist.brief.title)}", ""]
+    lines += ["| assumption | value |", "|---|---|"]
+    lines += [f"| {name} | {_escaped(value)} |" for name, value in assumptions(shortlist.brief)]
+    lines += ["", *(f"- {_escaped(line)}" for line in verdict(shortlist)), ""]
+    lines += [f"> **Caution.** {_escaped(text)}\n" for text in shortlist.cautions]
+    shown = [c for c in COLUMNS if c.name not in _NOT_IN_MARKDOWN]
+    lines += [
+        "| " + " | ".join(heading(c) for c in shown) + " |",
+        "|" + "|".join("---" if c.name in _TEXTUAL else "---:" for c in shown) + "|",
+    ]
+    for row in shortlist.frame.to_dict("records"):
+        lines.append("| " + " | ".join(_escaped(cell(c, row[c.name])) for c in shown) + " |")
+    for k in range(len(shortlist)):
+        lines += ["", f"## {k + 1}. {shortlist.pool.ids[k]}: `{shortlist.pool.code(k)}`", ""]
+        lines += [
+            "| element | between | closed in | class | in series | area [mm²] | value | multiplier "
+            "| must stand [V] | stress |",
+            "|---|---|---|---|---:|---:|---:|---:|---:|---:|",
+        ]
+        for e in shortlist.elements(k):
+            value = format_quantity(e.value, "F" if e.kind == "capacitor" else "ohm")
+            lines.append(
+                f"| {e.name} | {e.nodes[0]}, {e.nodes[1]} | {f'phase {e.phase}' if e.phase else ''} "
+                f"| {_escaped(e.device)} | {e.series} | {e.area:.4g} | {value} | {e.multiplier:.4g} "
+                f"| {e.voltage:.4g} | {e.stress:.1%} |"
+            )
+    lines += ["", "; ".join(f"{name} {value}" for name, value in shortlist.provenance.items()), ""]
+    return "\n".join(lines).encode()
+
+
+_TEXTUAL = {"id", "ratio", "families", "wiring", "pareto"}
+_NOT_IN_MARKDOWN = {"wiring", "slow_limit_ohm", "fast_limit_ohm"}
+
+
+def heading(column: Column) -> str:
+    """Heading with its unit in brackets."""
+    unit = _UNITS.get(column.unit, column.unit)
+    return f"{column.heading} [{unit}]" if unit else column.heading
+
+
+def cell(column: Column, value: object) -> str:
+    """One value as text, in the unit of the heading."""
+    if isinstance(value, bool):
+        return "yes" if value else ""
+    if column.unit == "1":
+        return f"{100 * float(str(value)):.1f}"
+    if isinstance(value, float):
+        return f"{value:.4g}"
+    return str(value)
+
+
+def _escaped(text: str) -> str:
+    """Text that stays text in Markdown."""
+    for sign in "\\`*_[]<>|":
+        text = text.replace(sign, f"\\{sign}")
+    return " ".join(text.split())

@@ -1,0 +1,260 @@
+"""The candidates of a brief: every converter that can hold the output, sized in batches."""
+
+from __future__ import annotations
+
+from collections import Counter
+from dataclasses import dataclass, fields
+from fractions import Fraction
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from capmuster.enumerate.census import CENSUS_REACH
+from capmuster.enumerate.converters import ConverterTable, converters, table_of
+from capmuster.enumerate.families import members
+from capmuster.rank.evaluation import Evaluation, efficiency, evaluate
+from capmuster.rank.frontier import frontier
+
+if TYPE_CHECKING:
+    from collections.abc import Callable, Iterator, Sequence
+
+    from numpy.typing import NDArray
+
+    from capmuster.enumerate.wiring import Converter
+    from capmuster.rank.brief import Brief
+
+_I, _O = 1, 2
+_UNCLEAN = "a switch is idle or blocks no voltage"
+_TOO_MANY_SWITCHES = "more switches than allowed"
+_NO_AREA = "no area within the budgets meets the droop"
+_TOO_LARGE = "the area is above the budget"
+_INEFFICIENT = "below the efficiency floor"
+_NOT_HELD = "the ratio cannot hold the output"
+
+
+@dataclass(frozen=True, slots=True)
+class Pool:
+    """All candidates that meet a brief, best first, and why the others were left out.
+
+    Attributes
+    ----------
+    tables
+        Converters, one table per group.
+    group, row
+        Shape (N,): table, and row in it, of each candidate.
+    ids
+        Shape (N,): id of each candidate.
+    capacitors
+        Shape (N,): number of flying capacitors.
+    evaluation
+        Figures of each candidate.
+    pareto
+        Shape (N,): whether no candidate is as good in area, worst efficiency, capacitors, switches and highest
+        blocking voltage, and better in one of them.
+    complete_up_to
+        Flying capacitors up to which every converter was considered; above it only family members were.
+    considered
+        Number of converters of the right sign that hold the output.
+    left_out
+        How many of these were left out, by reason.
+    refused
+        Reason for each included converter that is no candidate, by its id.
+    """
+
+    tables: tuple[ConverterTable, ...]
+    group: NDArray[np.intp]
+    row: NDArray[np.intp]
+    ids: NDArray[np.str_]
+    capacitors: NDArray[np.int64]
+    evaluation: Evaluation
+    pareto: NDArray[np.bool_]
+    complete_up_to: int
+    considered: int
+    left_out: dict[str, int]
+    refused: dict[str, str]
+
+    def __len__(self) -> int:
+        """Number of candidates that meet the brief."""
+        return len(self.group)
+
+    def converter(self, place: int) -> Converter:
+        """Candidate at a place, counted from 0."""
+        return self.tables[self.group[place]].converter(int(self.row[place]))
+
+    def ratio(self, place: int) -> Fraction:
+        """M of the candidate at a place."""
+        return self.tables[self.group[place]].ratio(int(self.row[place]))
+
+    def code(self, place: int) -> str:
+        """Wiring code of the candidate at a place."""
+        return self.tables[self.group[place]].code(int(self.row[place]))
+
+
+def gather(brief: Brief, include: Sequence[Converter] = ()) -> Pool:
+    """Enumerate, size and order all candidates of a brief.
+
+    Parameters
+    ----------
+    brief
+        What is asked for.
+    include
+        Converters that are candidates whether or not the search would find them; they may have idle or
+        equipotential switches.
+    """
+    reach = min(brief.most_capacitors, CENSUS_REACH)
+    left_out: Counter[str] = Counter()
+    refused: dict[str, str] = {}
+    considered = 0
+    fits: list[tuple[ConverterTable, Evaluation]] = []
+    for table, chosen in _sources(brief, reach, include):
+        holds = _where(table, brief.holds)
+        considered += int(np.count_nonzero(holds))
+        kept, figures, reasons = _judged(table.take(holds), brief, forgive_unclean=chosen)
+        left_out.update(reasons)
+        if len(kept):
+            fits.append((kept, figures))
+        elif chosen:
+            refused[table.ids()[0]] = next(iter(reasons), _NOT_HELD)
+    return _ordered(brief, fits, reach, considered, left_out, refused)
+
+
+def _judged(
+    table: ConverterTable, brief: Brief, *, forgive_unclean: bool
+) -> tuple[ConverterTable, Evaluation, Counter[str]]:
+    """Size converters that hold the output; return those that meet the brief, and why the others do not."""
+    reasons: Counter[str] = Counter()
+
+    def keep(good: NDArray[np.bool_], reason: str) -> NDArray[np.bool_]:
+        if not good.all():
+            reasons[reason] = int(np.count_nonzero(~good))
+        return good
+
+    table = table.take(keep(_where(table, lambda ratio: _efficient(brief, ratio)), _INEFFICIENT))
+    figures = evaluate(table, brief)
+    most_switches, most_area = brief.most_switches or np.inf, brief.area or np.inf
+    for reason, passes in (
+        (_UNCLEAN, lambda f: f.clean | forgive_unclean),
+        (_TOO_MANY_SWITCHES, lambda f: f.switches <= most_switches),
+        (_NO_AREA, lambda f: np.isfinite(f.area)),
+        (_TOO_LARGE, lambda f: f.area <= most_area),
+    ):
+        good = keep(passes(figures), reason)
+        table, figures = table.take(good), _taken(figures, good)
+    return table, figures, reasons
+
+
+def _sources(brief: Brief, reach: int, include: Sequence[Converter]) -> Iterator[tuple[ConverterTable, bool]]:
+    """Yield tables of distinct converters, and whether the user chose them."""
+    chosen = list(dict.fromkeys(include))
+    ids = {converter.id for converter in chosen}
+    for n in range(1, reach + 1):
+        for ratio in brief.ratios or (None,):
+            table = converters(n, ratio)
+            if any(converter.n == n for converter in chosen):
+                table = table.take(np.array([one not in ids for one in table.ids()], dtype=bool))
+            yield table, False
+    beyond = {
+        member.converter.id: member.converter
+        for member in members(brief.most_capacitors)
+        if member.converter.n > reach and (brief.ratios is None or member.converter.ratio in brief.ratios)
+    }
+    for n in range(reach + 1, brief.most_capacitors + 1):
+        same_size = [one for one in beyond.values() if one.n == n and one.id not in ids]
+        if same_size:
+            yield table_of(same_size), False
+    for converter in chosen:
+        yield table_of([converter]), True
+
+
+def _where(table: ConverterTable, condition: Callable[[Fraction], bool]) -> NDArray[np.bool_]:
+    """Where the exact ratio meets a condition, asked once per distinct ratio; shape (N,)."""
+    pairs, row_of = np.unique(table.port_charges[:, [_I, _O]], axis=0, return_inverse=True)
+    answers = np.array([condition(Fraction(-int(i), int(o))) for i, o in pairs.tolist()], dtype=bool)
+    return np.asarray(answers[row_of.reshape(-1)]) if len(pairs) else np.zeros(0, dtype=bool)
+
+
+def _efficient(brief: Brief, ratio: Fraction) -> bool:
+    if brief.efficiency_floor is None:
+        return True
+    return bool(worst_efficiency(brief, np.array([float(ratio)]))[0] >= brief.efficiency_floor * (1 - 1e-12))
+
+
+def worst_efficiency(brief: Brief, ratio: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Conduction-only efficiency at the worst input with the whole droop budget used, shape (N,)."""
+    limit = brief.r_max(ratio)
+    ends = [efficiency(brief, ratio, limit, volts) for volts in (brief.input_minimum, brief.input_maximum)]
+    return np.asarray(np.minimum(*ends))
+
+
+def _taken(evaluation: Evaluation, rows: NDArray[np.generic]) -> Evaluation:
+    return Evaluation(*(getattr(evaluation, field.name)[rows] for field in fields(Evaluation)))
+
+
+def _joined(fits: Sequence[tuple[ConverterTable, Evaluation]], brief: Brief) -> Evaluation:
+    evaluations = [figures for _, figures in fits] or [evaluate(converters(1).take(slice(0, 0)), brief)]
+    return Evaluation(
+        *(np.concatenate([getattr(one, field.name) for one in evaluations]) for field in fields(Evaluation))
+    )
+
+
+def _ordered(
+    brief: Brief,
+    fits: Sequence[tuple[ConverterTable, Evaluation]],
+    reach: int,
+    considered: int,
+    left_out: Counter[str],
+    refused: dict[str, str],
+) -> Pool:
+    figures = _joined(fits, brief)
+    tables = [table for table, _ in fits]
+    sizes = [len(table) for table in tables]
+    group = np.repeat(np.arange(len(tables)), sizes)
+    row = np.concatenate([np.zeros(0, dtype=np.intp), *(np.arange(size) for size in sizes)])
+    ids = np.array([one for table in tables for one in table.ids()], dtype=np.str_)
+    capacitors = np.repeat(np.array([table.n for table in tables], dtype=np.int64), sizes)
+    order = np.lexsort((ids, capacitors, figures.switches, _tie_classes(figures.area)))
+    figures = _taken(figures, order)
+    capacitors = capacitors[order]
+    costs = np.stack(
+        [
+            figures.area,
+            -worst_efficiency(brief, figures.ratio),
+            capacitors.astype(np.float64),
+            figures.switches.astype(np.float64),
+            figures.highest_blocking_voltage,
+        ],
+        axis=1,
+    )
+    return Pool(
+        tables=tuple(tables),
+        group=group[order].astype(np.intp),
+        row=row[order].astype(np.intp),
+        ids=ids[order],
+        capacitors=capacitors,
+        evaluation=figures,
+        pareto=frontier(_rounded(costs)),
+        complete_up_to=reach,
+        considered=considered,
+        left_out=dict(left_out),
+        refused=refused,
+    )
+
+
+_TIE = 1e-9
+
+
+def _tie_classes(area: NDArray[np.float64]) -> NDArray[np.int64]:
+    """Number areas in ascending order; areas within 1e-9 of the next lower one share a number."""
+    order = np.argsort(area, kind="stable")
+    sorted_area = area[order]
+    classes = np.zeros(len(area), dtype=np.int64)
+    classes[order] = np.concatenate([[0], np.cumsum(np.diff(sorted_area) > _TIE * sorted_area[:-1])])[
+        : len(area)
+    ]
+    return classes
+
+
+def _rounded(values: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Drop what rounding alone can make differ: keep 30 bits."""
+    mantissa, exponent = np.frexp(values)
+    return np.asarray(np.ldexp(np.round(np.ldexp(mantissa, 30)), exponent - 30))

@@ -1,0 +1,244 @@
+"""The shortlist of a brief: the ranked table, each candidate's elements, and what the search was."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from functools import cached_property
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from capmuster.enumerate.errors import CapmusterError
+from capmuster.enumerate.families import family_names
+from capmuster.rank._version import __version__
+from capmuster.rank.cautions import cautions
+from capmuster.rank.elements import Element, elements_of
+from capmuster.rank.evaluation import ceiling, efficiency
+from capmuster.rank.pool import Pool, gather
+
+if TYPE_CHECKING:
+    from collections.abc import Sequence
+
+    import pandas as pd
+
+    from capmuster.enumerate.wiring import Converter
+    from capmuster.rank.brief import Brief
+
+
+@dataclass(frozen=True, slots=True)
+class Column:
+    """A column of the shortlist.
+
+    Attributes
+    ----------
+    name
+        Its name in tables for programs, unit included.
+    heading
+        Its heading for people.
+    unit
+        Its unit, or an empty text.
+    meaning
+        One line.
+    """
+
+    name: str
+    heading: str
+    unit: str
+    meaning: str
+
+
+COLUMNS = (
+    Column("place", "place", "", "place by area efficiency, 1 is best"),
+    Column("id", "id", "", "short id, derived from the wiring"),
+    Column("ratio", "ratio", "", "M = V_out / V_in at no load"),
+    Column("families", "families", "", "families that the converter belongs to"),
+    Column("flying_capacitors", "capacitors", "", "flying capacitors"),
+    Column("switches", "switches", "", "switches"),
+    Column("area_mm2", "area", "mm2", "least area that meets the droop budget at the brief's frequency"),
+    Column("capacitor_area_mm2", "capacitor area", "mm2", "share of the capacitors"),
+    Column("silicon_area_mm2", "silicon area", "mm2", "share of the switches"),
+    Column("conductance_per_area_S_per_mm2", "G / area", "S/mm2", "output conductance per area"),
+    Column("impedance_ohm", "R_out", "ohm", "output impedance at that area, blend of both limits"),
+    Column("slow_limit_ohm", "R_SSL", "ohm", "slow-switching limit at that area"),
+    Column("fast_limit_ohm", "R_FSL", "ohm", "fast-switching limit at that area"),
+    Column("droop_V", "droop", "V", "load current times R_out"),
+    Column("efficiency_minimum", "efficiency at V_in min", "1", "conduction only, at the lowest input"),
+    Column("efficiency_nominal", "efficiency at V_in nom", "1", "conduction only, at the nominal input"),
+    Column("efficiency_maximum", "efficiency at V_in max", "1", "conduction only, at the highest input"),
+    Column("ceiling_minimum", "ceiling at V_in min", "1", "V_required / (M V_in) at the lowest input"),
+    Column("ceiling_nominal", "ceiling at V_in nom", "1", "V_required / (M V_in) at the nominal input"),
+    Column("ceiling_maximum", "ceiling at V_in max", "1", "V_required / (M V_in) at the highest input"),
+    Column("capacitor_utilisation", "capacitor utilisation", "1", "E / sum |q v| over capacitors"),
+    Column("switch_utilisation", "switch utilisation", "1", "4 E / sum |q v| over switches"),
+    Column(
+        "output_evenness", "output evenness", "1", "1 when both phases feed the output alike, 0 when one does"
+    ),
+    Column("highest_capacitor_voltage_V", "highest capacitor voltage", "V", "worst case over the capacitors"),
+    Column("highest_blocking_voltage_V", "highest blocking voltage", "V", "worst case over the switches"),
+    Column("pareto", "Pareto", "", "no candidate beats it in area, efficiency, parts and blocking voltage"),
+    Column("wiring", "wiring", "", "wiring code"),
+)
+"""Columns of `Shortlist.frame`, in their order."""
+
+
+@dataclass(frozen=True, slots=True)
+class Included:
+    """What became of a wiring that the user put in.
+
+    Attributes
+    ----------
+    id, wiring
+        The converter.
+    place
+        Its place among all candidates, or None.
+    reason
+        Why it has none.
+    """
+
+    id: str
+    wiring: str
+    place: int | None
+    reason: str
+
+
+@dataclass(frozen=True)
+class Shortlist:
+    """A brief's candidates, ranked.
+
+    Attributes
+    ----------
+    brief
+        What was asked for.
+    pool
+        All candidates that meet it, best first.
+    top
+        How many of them the table shows.
+    included
+        What became of the wirings that the user put in.
+    """
+
+    brief: Brief
+    pool: Pool
+    top: int
+    included: tuple[Included, ...]
+
+    def __len__(self) -> int:
+        """Rows of the table."""
+        return min(self.top, len(self.pool))
+
+    @property
+    def cautions(self) -> list[str]:
+        """Dangers that the brief gives away, in words."""
+        return cautions(self.brief)
+
+    @cached_property
+    def best_family_place(self) -> int | None:
+        """Place, counted from 1, of the best candidate that belongs to a family; None if none does."""
+        names = self._names
+        return next((k + 1 for k, one in enumerate(self.pool.ids.tolist()) if one in names), None)
+
+    @property
+    def gain_over_family(self) -> float | None:
+        """Area of the best family member over that of the best candidate; None without a family member."""
+        place = self.best_family_place
+        if place is None:
+            return None
+        area = self.pool.evaluation.area
+        return float(area[place - 1] / area[0])
+
+    @property
+    def provenance(self) -> dict[str, str]:
+        """Version, and fingerprints of the technology and of the brief."""
+        return {
+            "capmuster_version": __version__,
+            "technology_fingerprint": self.brief.technology.fingerprint,
+            "brief_fingerprint": self.brief.fingerprint,
+        }
+
+    @cached_property
+    def frame(self) -> pd.DataFrame:
+        """The table: one row per candidate, best first, with the columns `COLUMNS`."""
+        import pandas as pd  # noqa: PLC0415 -- slow to import
+
+        places = np.arange(len(self))
+        e = self.pool.evaluation
+        area, impedance, ratio = e.area[places], e.impedance[places], e.ratio[places]
+        levels = {
+            "minimum": self.brief.input_minimum,
+            "nominal": self.brief.input_nominal,
+            "maximum": self.brief.input_maximum,
+        }
+        values: dict[str, object] = {
+            "place": places + 1,
+            "id": self.pool.ids[places].tolist(),
+            "ratio": [str(self.pool.ratio(k)) for k in places.tolist()],
+            "families": [", ".join(self.families(k)) for k in places.tolist()],
+            "flying_capacitors": self.pool.capacitors[places],
+            "switches": e.switches[places],
+            "area_mm2": area,
+            "capacitor_area_mm2": e.capacitor_area[places],
+            "silicon_area_mm2": e.silicon_area[places],
+            "conductance_per_area_S_per_mm2": 1 / (impedance * area),
+            "impedance_ohm": impedance,
+            "slow_limit_ohm": e.slow[places] / e.capacitor_area[places],
+            "fast_limit_ohm": e.fast[places] / e.switching_area[places],
+            "droop_V": self.brief.current * impedance,
+            "capacitor_utilisation": e.capacitor_utilisation[places],
+            "switch_utilisation": e.switch_utilisation[places],
+            "output_evenness": e.output_evenness[places],
+            "highest_capacitor_voltage_V": e.highest_capacitor_voltage[places],
+            "highest_blocking_voltage_V": e.highest_blocking_voltage[places],
+            "pareto": self.pool.pareto[places],
+            "wiring": [self.pool.code(k) for k in places.tolist()],
+        }
+        for level, volts in levels.items():
+            values[f"efficiency_{level}"] = efficiency(self.brief, ratio, impedance, volts)
+            values[f"ceiling_{level}"] = ceiling(self.brief, ratio, volts)
+        frame = pd.DataFrame({column.name: values[column.name] for column in COLUMNS})
+        frame.attrs = {"units": {column.name: column.unit for column in COLUMNS}, **self.provenance}
+        return frame
+
+    def families(self, row: int) -> tuple[str, ...]:
+        """Families of the candidate in a row, counted from 0."""
+        return self._names.get(str(self.pool.ids[row]), ())
+
+    def elements(self, row: int) -> tuple[Element, ...]:
+        """Every capacitor and switch of the candidate in a row, counted from 0, sized."""
+        e = self.pool.evaluation
+        return elements_of(
+            self.pool.converter(row), self.brief, float(e.capacitor_area[row]), float(e.switching_area[row])
+        )
+
+    @cached_property
+    def _names(self) -> dict[str, tuple[str, ...]]:
+        return family_names(int(max(self.pool.capacitors, default=1)))
+
+
+def shortlist(brief: Brief, *, top: int = 10, include: Sequence[Converter] = ()) -> Shortlist:
+    """Rank every converter that can do the job of a brief.
+
+    Parameters
+    ----------
+    brief
+        What is asked for.
+    top
+        Rows of the table.
+    include
+        Converters of the user's own, ranked with the rest.
+
+    Raises
+    ------
+    CapmusterError
+        When ``top`` is below 1.
+    """
+    if top < 1:
+        raise CapmusterError(f"top: {top} is too small", accepted="1 or more")
+    pool = gather(brief, include)
+    place_of = {one: k + 1 for k, one in enumerate(pool.ids.tolist())} if include else {}
+    included = tuple(
+        Included(
+            one.id, one.code, place_of.get(one.id), "" if one.id in place_of else pool.refused.get(one.id, "")
+        )
+        for one in dict.fromkeys(include)
+    )
+    return Shortlist(brief, pool, top, included)
