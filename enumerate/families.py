@@ -12,7 +12,7 @@ from functools import lru_cache
 from itertools import count
 from typing import TYPE_CHECKING, TypeAlias
 
-from capmuster.enumerate.errors import CapmusterError
+from capmuster.enumerate.errors import CapmusterError, shortened
 from capmuster.enumerate.wiring import Cell, Converter
 
 if TYPE_CHECKING:
@@ -249,4 +249,4 @@ def check_family(name: str) -> str:
     for known in FAMILY_NAMES:
         if known.casefold() == name.strip().casefold():
             return known
-    raise CapmusterError(f"family: '{name}' is unknown", accepted=", ".join(FAMILY_NAMES))
+    raise CapmusterError(f"family: '{shortened(name)}' is unknown", accepted=", ".join(FAMILY_NAMES))
