@@ -15,7 +15,7 @@ from capmuster.rank._version import __version__
 if TYPE_CHECKING:
     from collections.abc import Sequence
 
-_COMMANDS = ("list", "show", "rank", "export", "count")
+_COMMANDS = ("list", "show", "draw", "rank", "export", "count")
 _BAD_INPUT = 2
 _INTERRUPTED = 130
 
@@ -46,6 +46,7 @@ def group() -> None:
     \b
     Every topology of a ratio:       capmuster list --ratio 2/5 --capacitors 4
     One of them in detail:           capmuster show 'I-G/O-I'
+    The same as a drawing:           capmuster draw 'I-G/O-I' --to doubler.svg
     The best ones for a rail:        capmuster rank greenhouse-node
     A shortlist for the review:      capmuster export greenhouse-node --to shortlist.xlsx
     """

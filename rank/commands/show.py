@@ -24,8 +24,8 @@ def command(converter: str, form: str) -> None:
     """Show charges, voltages and switches of one converter, exactly.
 
     All figures are per unit of output charge and per volt of input. A wiring code has one word for each
-    capacitor, plus-minus/plus-minus: where its plates sit in phase 1 and in phase 2. G, I, O are ground, input
-    and output; lower-case names are internal nodes of their phase.
+    capacitor, plus-minus/plus-minus: where its plates sit in phase 1 and in phase 2. G, I, O are ground,
+    input and output; lower-case names are internal nodes of their phase.
     """
     from capmuster.rank.detail import detail  # noqa: PLC0415 -- nothing heavy before it is needed
     from capmuster.rank.lookup import find_converter  # noqa: PLC0415
@@ -44,9 +44,11 @@ def command(converter: str, form: str) -> None:
 
 
 def _write_table(found: Detail) -> None:
+    from capmuster.rank.drawing.terminal import terminal_diagram  # noqa: PLC0415
     from capmuster.rank.rows import text_table  # noqa: PLC0415
 
     click.echo(f"{found.converter.id}   {found.converter.code}\n")
+    click.echo(terminal_diagram(found.converter) + "\n")
     click.echo(text_table(["figure", "value"], found.figures(), [False, False]))
     click.echo()
     click.echo(text_table(found.HEADER, found.rows(), [False, False, False, False, False, True, True]))
