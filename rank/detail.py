@@ -24,7 +24,8 @@ class Detail:
     """One converter, its charge flow and its families."""
 
     HEADER: ClassVar[tuple[str, ...]] = (
-        "element", "kind", "positive node", "negative node", "closed in phase", "charge multiplier", "voltage",
+        "element", "kind", "positive node", "negative node", "closed in phase", "charge multiplier",
+        "voltage",
     )  # fmt: skip
 
     converter: Converter

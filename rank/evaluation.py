@@ -58,8 +58,8 @@ class Evaluation:
     slow, fast
         Area coefficients of the two limits [ohm mm2].
     capacitor_area, switching_area
-        Areas of the capacitors, and of the switches that carry charge, that meet the droop budget at the brief's
-        frequency [mm2]; NaN where none within the budgets do.
+        Areas of the capacitors, and of the switches that carry charge, that meet the droop budget at the
+        brief's frequency [mm2]; NaN where none within the budgets do.
     idle_area
         Area of the switches that carry no charge [mm2].
     impedance

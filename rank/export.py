@@ -1,7 +1,7 @@
 """A shortlist as a file: CSV, XLSX, Markdown, JSON or Parquet, by suffix.
 
-Every file carries the program's version and the fingerprints of technology and brief, and holds the same bytes
-for the same input. All files of a call are rendered before the first one appears.
+Every file carries the program's version and the fingerprints of technology and brief, and holds the same
+bytes for the same input. All files of a call are rendered before the first one appears.
 """
 
 from __future__ import annotations
@@ -36,8 +36,8 @@ def export(shortlist: Shortlist, paths: Sequence[str | Path]) -> None:
     Raises
     ------
     CapmusterError
-        When a suffix is unknown, a path is named twice or cannot be written, or a format's package is missing.
-        Then no file is touched.
+        When a suffix is unknown, a path is named twice or cannot be written, or a format's package is
+        missing. Then no file is touched.
     """
     renderers = check_targets(paths)
     contents = [render(shortlist) for render in renderers]

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-import datetime
+import datetime as dt
 import io
 from typing import TYPE_CHECKING
 
@@ -20,8 +20,8 @@ if TYPE_CHECKING:
 _SHARES = {"capacitor_utilisation", "switch_utilisation", "output_evenness"}
 _WIDTHS = {"id": 14, "families": 24, "wiring": 48}
 _ELEMENT_HEADINGS = (
-    "place", "id", "element", "node", "node", "closed in phase", "class", "in series", "area [mm²]", "value", "unit",
-    "charge multiplier", "must stand [V]", "derated rating [V]", "stress [%]",
+    "place", "id", "element", "positive node", "negative node", "closed in phase", "class", "in series",
+    "area [mm²]", "value", "unit", "charge multiplier", "must stand [V]", "derated rating [V]", "stress [%]",
 )  # fmt: skip
 
 
@@ -41,7 +41,7 @@ def to_workbook(shortlist: Shortlist) -> bytes:
         },
     )
     # The date of creation would make every file differ.
-    book.set_properties({"title": "Shortlist", "created": datetime.datetime(2000, 1, 1, tzinfo=datetime.UTC)})
+    book.set_properties({"title": "Shortlist", "created": dt.datetime(2000, 1, 1, tzinfo=dt.UTC)})
     head = book.add_format({"bold": True, "text_wrap": True, "valign": "top", "bottom": 1})
     _shortlist_sheet(book, head, shortlist)
     _element_sheet(book, head, shortlist)

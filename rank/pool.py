@@ -49,8 +49,8 @@ class Pool:
     evaluation
         Figures of each candidate.
     pareto
-        Shape (N,): whether no candidate is as good in area, worst efficiency, capacitors, switches and highest
-        blocking voltage, and better in one of them.
+        Shape (N,): whether no candidate is as good in area, worst efficiency, capacitors, switches and
+        highest blocking voltage, and better in one of them.
     complete_up_to
         Flying capacitors up to which every converter was considered; above it only family members were.
     considered
@@ -74,20 +74,20 @@ class Pool:
     refused: dict[str, str]
 
     def __len__(self) -> int:
-        """Number of candidates that meet the brief."""
+        """Count the candidates that meet the brief."""
         return len(self.group)
 
     def converter(self, place: int) -> Converter:
         """Candidate at a place, counted from 0."""
-        return self.tables[self.group[place]].converter(int(self.row[place]))
+        return self.tables[int(self.group[place])].converter(int(self.row[place]))
 
     def ratio(self, place: int) -> Fraction:
         """M of the candidate at a place."""
-        return self.tables[self.group[place]].ratio(int(self.row[place]))
+        return self.tables[int(self.group[place])].ratio(int(self.row[place]))
 
     def code(self, place: int) -> str:
         """Wiring code of the candidate at a place."""
-        return self.tables[self.group[place]].code(int(self.row[place]))
+        return self.tables[int(self.group[place])].code(int(self.row[place]))
 
 
 def gather(brief: Brief, include: Sequence[Converter] = ()) -> Pool:
@@ -115,7 +115,7 @@ def gather(brief: Brief, include: Sequence[Converter] = ()) -> Pool:
             fits.append((kept, figures))
         elif chosen:
             refused[table.ids()[0]] = next(iter(reasons), _NOT_HELD)
-    return _ordered(brief, fits, reach, considered, left_out, refused)
+    return _ordered(brief, fits, reach=reach, considered=considered, left_out=left_out, refused=refused)
 
 
 def _judged(
@@ -132,12 +132,13 @@ def _judged(
     table = table.take(keep(_where(table, lambda ratio: _efficient(brief, ratio)), _INEFFICIENT))
     figures = evaluate(table, brief)
     most_switches, most_area = brief.most_switches or np.inf, brief.area or np.inf
-    for reason, passes in (
+    checks: tuple[tuple[str, Callable[[Evaluation], NDArray[np.bool_]]], ...] = (
         (_UNCLEAN, lambda f: f.clean | forgive_unclean),
-        (_TOO_MANY_SWITCHES, lambda f: f.switches <= most_switches),
+        (_TOO_MANY_SWITCHES, lambda f: np.asarray(f.switches <= most_switches)),
         (_NO_AREA, lambda f: np.isfinite(f.area)),
-        (_TOO_LARGE, lambda f: f.area <= most_area),
-    ):
+        (_TOO_LARGE, lambda f: np.asarray(f.area <= most_area)),
+    )
+    for reason, passes in checks:
         good = keep(passes(figures), reason)
         table, figures = table.take(good), _taken(figures, good)
     return table, figures, reasons
@@ -200,6 +201,7 @@ def _joined(fits: Sequence[tuple[ConverterTable, Evaluation]], brief: Brief) -> 
 def _ordered(
     brief: Brief,
     fits: Sequence[tuple[ConverterTable, Evaluation]],
+    *,
     reach: int,
     considered: int,
     left_out: Counter[str],
@@ -244,7 +246,7 @@ _TIE = 1e-9
 
 
 def _tie_classes(area: NDArray[np.float64]) -> NDArray[np.int64]:
-    """Number areas in ascending order; areas within 1e-9 of the next lower one share a number."""
+    """Give areas numbers in ascending order; areas within 1e-9 of the next lower one share a number."""
     order = np.argsort(area, kind="stable")
     sorted_area = area[order]
     classes = np.zeros(len(area), dtype=np.int64)

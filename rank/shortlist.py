@@ -195,7 +195,8 @@ class Shortlist:
             values[f"efficiency_{level}"] = efficiency(self.brief, ratio, impedance, volts)
             values[f"ceiling_{level}"] = ceiling(self.brief, ratio, volts)
         frame = pd.DataFrame({column.name: values[column.name] for column in COLUMNS})
-        frame.attrs = {"units": {column.name: column.unit for column in COLUMNS}, **self.provenance}
+        frame.attrs["units"] = {column.name: column.unit for column in COLUMNS}
+        frame.attrs.update(self.provenance)
         return frame
 
     def families(self, row: int) -> tuple[str, ...]:

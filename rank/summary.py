@@ -61,7 +61,7 @@ def assumptions(brief: Brief) -> list[tuple[str, str]]:
 
 
 def verdict(shortlist: Shortlist) -> list[str]:
-    """What the search covered, what it left out, and what the best candidate gains."""
+    """Say what the search covered, what it left out, and what the best candidate gains."""
     pool = shortlist.pool
     most = shortlist.brief.most_capacitors
     reach = f"complete up to {pool.complete_up_to} flying capacitors"

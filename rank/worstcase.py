@@ -88,7 +88,7 @@ _Slopes: TypeAlias = "tuple[NDArray[np.float64], NDArray[np.float64]]"
 
 
 def _capacitor_corners(table: ConverterTable, switches: SwitchTable, law: _Law) -> Iterator[_Slopes]:
-    """Yield, for each swinging capacitor and state, volts across capacitors and switches per volt at the output."""
+    """Yield volts across capacitors and switches per volt at the output, for each swinging capacitor and phase."""
     for i in range(table.n):
         potentials = law.potentials(law.source, left_out=i)
         blocked = _between(potentials, _open_phase(switches), switches.high, switches.low)
@@ -97,7 +97,7 @@ def _capacitor_corners(table: ConverterTable, switches: SwitchTable, law: _Law) 
 
 
 def _switch_corners(table: ConverterTable, switches: SwitchTable, law: _Law) -> Iterator[_Slopes]:
-    """Yield, for each switch that takes all of the drop, volts across capacitors and switches per volt at the output."""
+    """Yield volts across capacitors and switches per volt at the output, for each switch that takes it all."""
     for j in range(int(switches.count.max(initial=0))):
         far = _FarSide.of(table, switches, j)
         bridged = np.zeros(law.source.shape)
@@ -158,11 +158,12 @@ class _FarSide:
         return cls(phase, vertex, level, ~port_above, other)
 
     def holds(self, phase: int, here: NDArray[np.int8], there: NDArray[np.int8]) -> NDArray[np.float64]:
-        """Where clusters (vertex ``here`` in ``phase``, ``there`` in the other one) are on the far side, shape (N, k)."""
+        """Where clusters (vertices ``here`` in ``phase``, ``there`` in the other) are on the far side, (N, k)."""
         row = np.arange(len(self.phase))[:, None]
         height = self.other[row, there]
         side = (height >= self.level[:, None]) == self.above[:, None]
-        return ((self.phase == phase)[:, None] & (here == self.vertex[:, None]) & side).astype(np.float64)
+        on_it = (self.phase == phase)[:, None] & (here == self.vertex[:, None]) & side
+        return np.asarray(on_it, dtype=np.float64)
 
 
 def _open_phase(switches: SwitchTable) -> NDArray[np.intp]:
@@ -181,7 +182,6 @@ def _across(
     table: ConverterTable, potentials: NDArray[np.float64], phase: NDArray[np.intp]
 ) -> NDArray[np.float64]:
     """Voltage of every capacitor in one phase per row, shape (N, n)."""
-    row = np.arange(len(table))[:, None]
     first = phase[:, None] == 0
     plus = np.where(first, table.words[:, :, 0], table.words[:, :, 2])
     minus = np.where(first, table.words[:, :, 1], table.words[:, :, 3])

@@ -16,7 +16,7 @@ import click
     multiple=True,
     required=True,
     metavar="FILE",
-    help="Where to write; the suffix says how: .csv, .json, .md, .parquet, .xlsx. May be given several times.",
+    help="Where to write, as the suffix says: .csv, .json, .md, .parquet, .xlsx. May be given several times.",
 )
 @click.option("--top", type=int, default=10, show_default=True, metavar="K", help="Hold the best K.")
 @click.option(

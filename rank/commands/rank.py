@@ -40,7 +40,8 @@ _IN_TERMINAL = (
 def command(brief: str, top: int, include: tuple[str, ...], form: str) -> None:
     """Rank every converter that can do the job of BRIEF by area efficiency.
 
-    BRIEF is the name of a shipped brief or a TOML file. The least area that meets the droop budget comes first.
+    BRIEF is the name of a shipped brief or a TOML file. The least area that meets the droop budget comes
+    first.
     """
     from capmuster.rank.commands.ranking import ranked  # noqa: PLC0415 -- nothing heavy before it is needed
 
