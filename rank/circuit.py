@@ -151,7 +151,8 @@ def circuit_of(
     plate_fraction
         Bottom-plate capacitance as a share of each capacitance; 0 for none.
     plate
-        Which plate carries it, one for all or one for each capacitor.
+        Which plate carries it, one for all or one for each capacitor. A plate that is wired to a port is held
+        there, so its parasitic is left out.
     duty, dead_time
         See `Circuit`.
 
@@ -173,7 +174,9 @@ def circuit_of(
     series = _each(series_resistances, count, "the series resistances")
     ohms = _each(resistances, len(network.switches), "the switch resistances")
     shares = _each(plate_fraction, count, "the plate fraction")
-    sides = [plate] * count if isinstance(plate, str) else list(plate)
+    sides: list[Plate] = [plate] * count if isinstance(plate, str) else list(plate)
+    if len(sides) != count:
+        raise CapmusterError(f"{len(sides)} values for the plate", accepted=f"1 or {count}")
 
     where = {
         (index, side): node for node, cluster in enumerate(network.clusters) for index, side in cluster.plates
@@ -192,7 +195,7 @@ def circuit_of(
         plates=tuple(
             PlateParasitic(f"C{i + 1}", where[i, 1 if sides[i] == "plus" else -1], shares[i] * farads[i])
             for i in range(count)
-            if shares[i] > 0
+            if shares[i] > 0 and where[i, 1 if sides[i] == "plus" else -1] not in port.values()
         ),
         duty=duty,
         dead_time=dead_time,

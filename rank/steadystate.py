@@ -249,6 +249,29 @@ class SteadyState:
         spans = durations(self.circuit, frequency)[:, self.interval_index] * self.rates
         return self._solve(0.5 / np.tanh(0.5 * spans))
 
+    def settling_cycles(self, frequency: float, tolerance: float) -> int:
+        """Count the cycles after which any start has faded to a tolerance.
+
+        Parameters
+        ----------
+        frequency
+            Switching frequency [Hz].
+        tolerance
+            Share of the first deviation that may be left.
+
+        Returns
+        -------
+        int
+            At least 1.
+        """
+        lengths = durations(self.circuit, frequency)[0]
+        cycle = np.eye(len(self.directions))
+        for interval, length in zip(self.intervals, lengths, strict=True):
+            faded = -np.expm1(-interval.rates * length)
+            cycle -= (interval.directions * faded) @ (interval.directions.T @ cycle)
+        left = float(np.abs(np.linalg.eigvals(cycle)).max(initial=0.0))
+        return max(1, int(np.ceil(np.log(tolerance) / np.log(max(left, tolerance)))))
+
     def charges(self, frequency: npt.ArrayLike) -> Array:
         """Charge per cycle [C] that input and output give to the circuit, per volt of each.
 

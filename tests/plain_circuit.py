@@ -1,7 +1,7 @@
 """One switched circuit, slowly and plainly: the oracle for steady states and transients.
 
-It shares nothing with the code under test but the description of a circuit: capacitor voltages are the states,
-each capacitor is a voltage source in modified nodal analysis (so capacitors without series resistance
+It shares nothing with the code under test but the description of a circuit: capacitor voltages are the
+states, each capacitor is a voltage source in modified nodal analysis (so capacitors without series resistance
 must not form loops), and `scipy.linalg.expm` of the augmented system carries it through the intervals.
 """
 
@@ -170,7 +170,12 @@ def random_converter(rng: np.random.Generator, n: int) -> Converter:
 
 
 def random_circuit(
-    converter: Converter, rng: np.random.Generator, *, series: bool = True, plates: bool = False, **timing: float
+    converter: Converter,
+    rng: np.random.Generator,
+    *,
+    series: bool = True,
+    plates: bool = False,
+    **timing: float,
 ) -> Circuit:
     """Give a converter unequal values and, in each vertex of each phase, any tree of switches."""
     words = converter.words

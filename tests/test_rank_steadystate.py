@@ -1,4 +1,4 @@
-"""The exact periodic steady state: closed forms, textbook identities, and a plain augmented matrix exponential."""
+"""The exact periodic steady state: closed forms, textbook identities, and a plain matrix exponential."""
 
 import numpy as np
 import plain_circuit
@@ -29,7 +29,7 @@ def doubler(first=0.3, second=0.7, capacitance=1.0, resistance=0.0, **rest):
 @pytest.mark.parametrize("duty", [0.5, 0.13])
 @pytest.mark.parametrize("resistance", [0.0, 0.1])
 def test_closed_form_of_a_single_loop_over_twelve_decades(duty, resistance):
-    """R_out = (k^2 / (2 f C)) [coth(T1/(2 R1 C)) + coth(T2/(2 R2 C))], textbook RC circuit theory; k = 1 here."""
+    """R_out = (k^2 / (2 f C)) [coth(T1/(2 R1 C)) + coth(T2/(2 R2 C))], RC circuit theory; k = 1 here."""
     first, second, capacitance = 0.3, 0.7, 2.0
     found = output_impedance(doubler(first, second, capacitance, resistance, duty=duty), DECADES)
     periods = 1 / DECADES
@@ -104,7 +104,7 @@ def test_input_power_is_output_power_and_heat(seed):
 
 @pytest.mark.parametrize("resistance", [1e-6, 1.0, 1e3])
 def test_two_capacitors_joined_through_any_resistance(resistance):
-    """They lose C1 C2 (V1 - V2)^2 / (2 (C1 + C2)), textbook physics; in time t the share 1 - exp(-2 t / tau) of it."""
+    """They lose C1 C2 (V1 - V2)^2 / (2 (C1 + C2)), textbook; in time t a share 1 - exp(-2 t / tau)."""
     one, two, v_one, v_two = 2.0, 0.5, 5.0, 1.5
     capacitors = (Capacitor("C1", 3, 0, one), Capacitor("C2", 4, 0, two))
     switches = (Switch("A", 3, 1, 1, 0.1), Switch("B", 4, 2, 1, 0.1), Switch("AB", 3, 4, 2, resistance))
@@ -135,7 +135,9 @@ def test_loops_of_capacitors_need_no_resistance():
             Capacitor("C5", 5, 2, 0.9, series),
         )
         base = doubler()
-        return Circuit((*base.nodes, "x"), base.ports, capacitors, (*base.switches, Switch("S5", 5, 0, 1, 0.4)))
+        return Circuit(
+            (*base.nodes, "x"), base.ports, capacitors, (*base.switches, Switch("S5", 5, 0, 1, 0.4))
+        )
 
     frequency = np.logspace(-3, 1, 9)
     bare, damped = output_impedance(circuit(0.0), frequency), output_impedance(circuit(1e-7), frequency)
@@ -149,7 +151,7 @@ def test_loops_of_capacitors_need_no_resistance():
 
 
 def test_parallel_capacitors_share_by_capacitance_when_slow_and_by_resistance_when_fast():
-    """Two RC branches in parallel: the current divides by C in the slow limit, by 1/r in the fast one (textbook)."""
+    """Two RC branches in parallel: charge divides by C when slow, current by 1/r when fast (textbook)."""
     capacitors = (Capacitor("C1", 3, 4, 1.0, 0.5), Capacitor("C2", 3, 4, 3.0, 2.0))
     base = doubler()
     circuit = Circuit(base.nodes, base.ports, capacitors, base.switches)
@@ -164,7 +166,7 @@ def test_parallel_capacitors_share_by_capacitance_when_slow_and_by_resistance_wh
 
 
 def test_capacitor_without_net_charge_raises_the_impedance_between_the_limits():
-    """Hung on the middle of one loop's resistance it carries nothing in either limit and shunts in between."""
+    """Hung on the middle of one loop's resistance it carries nothing in either limit, and shunts between."""
     plain = Circuit(
         ("G", "I", "O", "p", "m", "x"),
         (0, 1, 2),
@@ -206,7 +208,7 @@ def test_plate_parasitic_shifts_the_no_load_ratio(node, ratio):
 
 
 def test_reciprocity_without_dead_time():
-    """Two intervals without dead time: the ratio of voltages is that of charges (energy balance at any ratio)."""
+    """Two intervals without dead time: the ratio of voltages is that of charges."""
     rng = np.random.default_rng(5)
     circuit = plain_circuit.random_circuit(plain_circuit.random_converter(rng, 3), rng, plates=True)
     found = output_impedance(circuit, DECADES)
@@ -247,7 +249,9 @@ def test_refused_values(change, message):
 
 def test_refused_circuits_and_frequencies():
     base = doubler()
-    idle = Circuit((*base.nodes, "x"), base.ports, (*base.capacitors, Capacitor("C2", 3, 5, 1.0)), base.switches)
+    idle = Circuit(
+        (*base.nodes, "x"), base.ports, (*base.capacitors, Capacitor("C2", 3, 5, 1.0)), base.switches
+    )
     with pytest.raises(IllPosedError, match="C2 never exchanges charge"):
         SteadyState.of(idle)
     short = Circuit(base.nodes, base.ports, base.capacitors, (*base.switches, Switch("S5", 1, 2, 1, 1.0)))

@@ -1,6 +1,7 @@
 """Start-up from empty capacitors: closed forms and a general-purpose integrator."""
 
 import math
+from itertools import pairwise
 
 import numpy as np
 import plain_circuit
@@ -33,11 +34,13 @@ def test_first_charge_of_an_empty_capacitor():
     assert found.input_peak == pytest.approx(3.0 + 3.0 * (1 - math.exp(-1)), rel=1e-12)  # start of phase 2
     assert found.capacitor_high[0] == pytest.approx(3.0 * (1 - math.exp(-1)), rel=1e-12)
     one = start_up(DOUBLER, 1e-3, 3.0, output_capacitance=math.inf, cycles=1)
-    assert one.input_charge[0] == pytest.approx(3.0 + 6.0, rel=1e-9)  # C V, then C (V + V) against an output at 0
+    assert one.input_charge[0] == pytest.approx(
+        3.0 + 6.0, rel=1e-9
+    )  # C V, then C (V + V) against an output at 0
 
 
 def test_settles_at_the_steady_state():
-    """After many cycles into a resistor the output meets ratio V_in - R_out I of the exact steady state."""
+    """After many cycles into a resistor the output meets that of the exact steady state."""
     load = 40.0
     found = start_up(DOUBLER, 0.5, 1.0, output_capacitance=500.0, load_resistance=load, cycles=20_000)
     point = operate(SteadyState.of(DOUBLER), 0.5, 1.0, output_current=found.output_voltage[-1] / load)
@@ -47,7 +50,7 @@ def test_settles_at_the_steady_state():
 
 
 def test_no_load_charge_of_the_output():
-    """Each cycle's charge through the input is the ratio times the output's, plus what the flying capacitor keeps."""
+    """The input gives the ratio times the charge of the output, plus what the flying capacitor keeps."""
     output = 5.0
     found = start_up(DOUBLER, 0.5, 1.0, output_capacitance=output)
     kept = found.capacitor_high[0]
@@ -57,14 +60,14 @@ def test_no_load_charge_of_the_output():
 
 @pytest.mark.parametrize("seed", range(8))
 def test_against_a_general_purpose_integrator(seed):
-    """`scipy.integrate.solve_ivp` on capacitor voltages in modified nodal analysis, output capacitor as one more."""
+    """`scipy.integrate.solve_ivp` on capacitor voltages in modified nodal analysis, the output's too."""
     rng = np.random.default_rng(seed)
     converter = plain_circuit.random_converter(rng, 1 + seed % 4)
     circuit = plain_circuit.random_circuit(converter, rng, duty=float(rng.uniform(0.3, 0.7)))
     output, frequency, cycles, first = 20.0, 0.2, 4, 1 + seed % 2
     found = start_up(circuit, frequency, 1.0, output_capacitance=output, cycles=cycles, first_phase=first)
 
-    # The oracle holds the output by a source: let the output voltage be a state that the port current charges.
+    # The oracle holds the output by a source: let the output voltage be a state, charged by the port current.
     phases = plain_circuit.phases_of(circuit, frequency)
     phases = phases if first == 1 else phases[::-1]
     n = len(circuit.capacitors)
@@ -135,14 +138,14 @@ def test_extremes_and_mean_square_of_exponentials(seed):
     nodes, weights = np.polynomial.legendre.leggauss(60)
     edges = np.concatenate([[0.0], duration * np.logspace(-6, 0, 30)])
     total = 0.0
-    for left, right in zip(edges, edges[1:], strict=False):
+    for left, right in pairwise(edges):
         moments = left + (right - left) * (nodes + 1) / 2
         total = total + ((terms @ np.exp(-np.outer(rates, moments))) ** 2) @ weights * (right - left) / 2
     np.testing.assert_allclose(mean_square(terms, rates, duration), total / duration, rtol=1e-9)
 
 
 def test_zeros_of_a_sum_with_known_ones():
-    """x = exp(-t) turns (x - 1/2)(x - 1/4)(x - 3/4) into a sum of exponentials with zeros at -ln of the roots."""
+    """With x = exp(-t) the product (x - 1/2)(x - 1/4)(x - 3/4) has its zeros at -ln of the roots."""
     coefficients = np.poly([0.5, 0.25, 0.75])  # x^3 first
     found = zeros(coefficients[::-1], [0.0, 1.0, 2.0, 3.0], 10.0)
     np.testing.assert_allclose(found, [-math.log(0.75), -math.log(0.5), -math.log(0.25)], rtol=1e-10)
