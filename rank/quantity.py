@@ -17,7 +17,23 @@ from typing import Final, Literal, get_args
 from capmuster.enumerate.errors import CapmusterError
 
 Unit = Literal[
-    "V", "A", "W", "Hz", "F", "C", "J", "s", "ohm", "mm2", "ohm mm2", "F/mm2", "C/mm2", "A/mm2", "1"
+    "V",
+    "A",
+    "W",
+    "Hz",
+    "F",
+    "C",
+    "J",
+    "s",
+    "ohm",
+    "mm2",
+    "ohm mm2",
+    "F/mm2",
+    "C/mm2",
+    "A/mm2",
+    "degC",
+    "EUR",
+    "1",
 ]
 """Units a field can have; ``1`` is a plain number or a percentage."""
 
@@ -52,6 +68,8 @@ _EXAMPLES: Final[dict[str, str]] = {
     "F/mm2": "a density such as 1.5 nF/mm2",
     "C/mm2": "a charge per area such as 2.4 nC/mm2",
     "A/mm2": "a current per area such as 10 nA/mm2",
+    "degC": "a temperature such as 85 degC",
+    "EUR": "a price such as 12.50 EUR",
     "1": "a number such as 0.85 or 85 %",
 }
 _SIGNS: Final[dict[str, str]] = {"positive": "above 0", "not negative": "0 or above", "any": "of either sign"}
