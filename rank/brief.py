@@ -3,13 +3,14 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass, fields
+from dataclasses import asdict, dataclass, fields, replace
 from fractions import Fraction
 from typing import TYPE_CHECKING, Literal
 
 import numpy as np
 
 from capmuster.enumerate.errors import CapmusterError
+from capmuster.rank.conditions import LoadPoint, Tolerance, profile_faults
 from capmuster.rank.faults import Fault, FaultsError, raise_faults
 from capmuster.rank.quantity import format_quantity
 from capmuster.rank.technology import Technology, fingerprint, load_technology
@@ -20,10 +21,15 @@ if TYPE_CHECKING:
 
     from numpy.typing import ArrayLike, NDArray
 
+    from capmuster.rank.brief_file import BriefFile
     from capmuster.rank.tomlplace import Path
 
+Objective = Literal["conduction-area", "least-loss", "least-area", "power-density"]
+Regulation = Literal["frequency", "conductance"]
+Drive = Literal["any", "rails"]
 Use = Literal["fixed-ratio", "regulated"]
 
+_HALF = 0.5
 _ROUNDING = 1e-12  # relative: a droop budget this small is no more than the rounding of its two terms
 
 
@@ -64,6 +70,31 @@ class Brief:
         Least efficiency at the worst input of the range [1], or None.
     name
         The name it was loaded by: the file's name without suffix.
+    objective
+        What is ranked by. "conduction-area": the least area whose conduction meets the droop at `frequency`. With
+        all losses counted: "least-loss" at the nominal input, or over `profile`, within the area budgets;
+        "least-area" that keeps the efficiency floor at every input; "power-density", the greatest one that keeps
+        the floor at the nominal input, with the load free from `current_least` to `current`.
+    frequency_minimum
+        Lowest switching frequency [Hz], which makes `frequency` the highest one; None if it is fixed.
+    duty
+        Share of phase 1 [1], or None if it is free.
+    regulation
+        What holds the output in regulated use: the frequency, or the on-resistances at a fixed frequency.
+    output_most
+        In fixed-ratio use the highest output that is acceptable, at the highest input without load [V], or None.
+    current_least
+        Lowest load current, for "power-density" [A].
+    profile
+        The load over time, or empty for the full load all the time.
+    drive
+        "rails" leaves out converters with a switch whose gate no rail can drive.
+    tolerance
+        How far parts and conditions may be off, or None.
+    output_ripple, input_ripple
+        Peak-to-peak ripple that the capacitors at output and input must keep [V], or None.
+    copies
+        Interleaved copies that share the load.
 
     Raises
     ------
@@ -88,6 +119,18 @@ class Brief:
     capacitor_area: float | None = None
     efficiency_floor: float | None = None
     name: str = ""
+    objective: Objective = "conduction-area"
+    frequency_minimum: float | None = None
+    duty: float | None = 0.5
+    regulation: Regulation = "frequency"
+    output_most: float | None = None
+    current_least: float | None = None
+    profile: tuple[LoadPoint, ...] = ()
+    drive: Drive = "any"
+    tolerance: Tolerance | None = None
+    output_ripple: float | None = None
+    input_ripple: float | None = None
+    copies: int = 1
 
     def __post_init__(self) -> None:
         """Check the values against each other."""
@@ -99,6 +142,11 @@ class Brief:
         return 1 if self.required > 0 else -1
 
     @property
+    def counts_losses(self) -> bool:
+        """Whether the ranking counts all losses."""
+        return self.objective != "conduction-area"
+
+    @property
     def least_ratio(self) -> Fraction:
         """``|V_required| / V_in,min``, exact; a ratio must be above it in magnitude."""
         return _exact(abs(self.required)) / _exact(self.input_minimum)
@@ -108,12 +156,20 @@ class Brief:
         """Twelve hexadecimal digits that change with any value, but not with the file's name or layout."""
         content = {one.name: getattr(self, one.name) for one in fields(self) if one.name != "name"}
         content["technology"] = self.technology.fingerprint
+        content["profile"] = [asdict(point) for point in self.profile]
+        content["tolerance"] = None if self.tolerance is None else asdict(self.tolerance)
         content["ratios"] = None if self.ratios is None else [str(ratio) for ratio in self.ratios]
         return fingerprint(content)
 
     def holds(self, ratio: Fraction) -> bool:
         """Whether a converter of this ratio has any droop budget, decided exactly."""
         return ratio * self.sign > self.least_ratio
+
+    def bears(self, ratio: Fraction) -> bool:
+        """Whether the load bears the output of this ratio at the highest input, decided exactly."""
+        if self.output_most is None:
+            return True
+        return ratio * self.sign * _exact(self.input_maximum) <= _exact(abs(self.output_most))
 
     def r_max(self, ratio: ArrayLike) -> NDArray[np.float64]:
         """Return the highest output impedance that meets the output at the least input.
@@ -167,27 +223,51 @@ def load_brief(name_or_path: str | FilePath) -> Brief:
         place = error.place or places.place(("technology",))
         raise CapmusterError(f"technology: {error.problem}", accepted=error.accepted, place=place) from None
     try:
-        return Brief(
-            title=content.title,
-            technology=technology,
-            input_minimum=content.input.minimum,
-            input_nominal=content.input.nominal,
-            input_maximum=content.input.maximum,
-            use=content.output.use,
-            required=content.output.required,
-            current=content.load.current,
-            frequency=content.design.frequency,
-            ratios=content.search.ratios,
-            most_capacitors=content.search.capacitors,
-            most_switches=content.search.switches,
-            area=content.design.area,
-            silicon_area=content.design.silicon_area,
-            capacitor_area=content.design.capacitor_area,
-            efficiency_floor=content.design.efficiency,
-            name=path.stem,
-        )
+        return _brief(content, technology, path.stem)
     except FaultsError as error:
         raise FaultsError(error.faults, places) from None
+
+
+def _brief(content: BriefFile, technology: Technology, name: str) -> Brief:
+    derating, design, search, output = content.derating, content.design, content.search, content.output
+    if derating is not None:
+        technology = replace(
+            technology,
+            capacitor_derating=derating.capacitor or technology.capacitor_derating,
+            switch_derating=derating.switch or technology.switch_derating,
+        )
+    profile = [LoadPoint(one.share, one.current, one.input) for one in content.load.profile]
+    return Brief(
+        title=content.title,
+        technology=technology,
+        input_minimum=content.input.minimum,
+        input_nominal=content.input.nominal,
+        input_maximum=content.input.maximum,
+        use=output.use,
+        required=output.required,
+        current=content.load.current,
+        frequency=design.highest_frequency,
+        ratios=search.ratios,
+        most_capacitors=search.capacitors,
+        most_switches=search.switches,
+        area=design.area,
+        silicon_area=design.silicon_area,
+        capacitor_area=design.capacitor_area,
+        efficiency_floor=design.efficiency,
+        name=name,
+        objective=design.objective,
+        frequency_minimum=design.frequency_minimum,
+        duty=None if design.duty == "free" else design.duty,
+        regulation=output.regulation or "frequency",
+        output_most=output.most,
+        current_least=content.load.least,
+        profile=tuple(profile),
+        drive=search.drive,
+        tolerance=None if content.tolerance is None else Tolerance(**content.tolerance.model_dump()),
+        output_ripple=output.ripple,
+        input_ripple=content.input.ripple,
+        copies=design.copies,
+    )
 
 
 def _exact(value: float) -> Fraction:
@@ -200,7 +280,10 @@ def _faults(brief: Brief) -> Iterator[Fault]:
     unsound = list(_unsound_values(brief))
     yield from unsound
     yield from _area_faults(brief)
+    yield from _objective_faults(brief)
+    yield from _range_faults(brief)
     if not unsound:
+        yield from profile_faults(brief.profile, brief.current, brief.input_minimum, brief.input_maximum)
         yield from _input_faults(brief)
         yield from _ratio_faults(brief)
         yield from _floor_faults(brief)
@@ -219,6 +302,11 @@ def _unsound_values(brief: Brief) -> Iterator[Fault]:
         ("design", "silicon_area"): brief.silicon_area,
         ("design", "capacitor_area"): brief.capacitor_area,
         ("design", "efficiency"): brief.efficiency_floor,
+        ("design", "frequency_minimum"): brief.frequency_minimum,
+        ("design", "copies"): brief.copies,
+        ("load", "least"): brief.current_least,
+        ("output", "ripple"): brief.output_ripple,
+        ("input", "ripple"): brief.input_ripple,
     }
     for path, value in above_zero.items():
         if value is not None and not (value > 0 and math.isfinite(value)):
@@ -229,6 +317,44 @@ def _unsound_values(brief: Brief) -> Iterator[Fault]:
     if brief.efficiency_floor is not None and brief.efficiency_floor >= 1:
         problem = f"value {format_quantity(brief.efficiency_floor, '1')} is not allowed"
         yield Fault(("design", "efficiency"), problem, "below 100 %")
+
+
+def _objective_faults(brief: Brief) -> Iterator[Fault]:
+    """Find what an objective lacks, or what it has no use for."""
+    path = ("design", "objective")
+    if brief.objective == "least-loss" and brief.area is None and brief.silicon_area is None:
+        problem = "least-loss has no area budget, and loss only falls with area"
+        yield Fault(path, problem, "area, or silicon_area and capacitor_area")
+    if brief.objective in ("least-area", "power-density") and brief.efficiency_floor is None:
+        yield Fault(path, f"{brief.objective} needs an efficiency floor", "design.efficiency")
+    if brief.objective == "power-density" and brief.current_least is None:
+        yield Fault(path, "power-density needs the range of the load", "load.least, the lowest load current")
+    if brief.profile and brief.objective != "least-loss":
+        yield Fault(("load", "profile"), f"does not belong to {brief.objective}", 'objective = "least-loss"')
+    if not brief.counts_losses:
+        accepted = "an objective that counts losses"
+        if brief.frequency_minimum is not None:
+            yield Fault(("design", "frequency_minimum"), "does not belong to conduction-area", accepted)
+        if brief.duty != _HALF:
+            yield Fault(("design", "duty"), "does not belong to conduction-area", accepted)
+
+
+def _range_faults(brief: Brief) -> Iterator[Fault]:
+    """Find bounds that are the wrong way round."""
+    if brief.duty is not None and not 0 < brief.duty < 1:
+        yield Fault(
+            ("design", "duty"), f"value {brief.duty:g} is not allowed", '"free", or between 0 and 100 %'
+        )
+    for path, low, name, high in (
+        (("design", "frequency_minimum"), brief.frequency_minimum, "the highest frequency", brief.frequency),
+        (("load", "least"), brief.current_least, "load.current", brief.current),
+    ):
+        if low is not None and low > high:
+            yield Fault(path, f"value {low:g} is above {name}, {high:g}", f"at most {name}")
+    most = brief.output_most
+    if most is not None and not (math.isfinite(most) and most * brief.sign >= abs(brief.required)):
+        problem = f"value {format_quantity(most, 'V', 6)} is closer to 0 than the least output"
+        yield Fault(("output", "most"), problem, "an output beyond output.least")
 
 
 def _required(brief: Brief) -> Path:

@@ -82,6 +82,8 @@ class SwitchClass:
         How the output charge grows with voltage [1]: 1 for a linear capacitance, 0.5 for an abrupt junction.
     least_area
         Smallest device that is made [mm2].
+    leakage
+        Leakage current per area while it blocks its rated voltage [A/mm2].
     """
 
     name: str
@@ -94,6 +96,7 @@ class SwitchClass:
     output_charge_voltage: float
     output_charge_exponent: float
     least_area: float
+    leakage: float = 0.0
 
     def output_charge_at(self, voltage: ArrayLike) -> FloatArray:
         """Output charge per area [C/mm2] at blocking voltages [V], ``q_ref (V / V_ref)^m``; any shape."""
@@ -133,6 +136,7 @@ class SwitchColumns:
     output_charge_voltage: FloatArray
     output_charge_exponent: FloatArray
     least_area: FloatArray
+    leakage: FloatArray
 
 
 @dataclass(frozen=True, slots=True)
@@ -175,6 +179,8 @@ class Technology:
         Power of the controller [W].
     wiring_resistance
         Resistance of the wiring, in series with the output [ohm].
+    sleep_power
+        Power of the controller while the load sleeps [W]; None if it is the same.
     """
 
     name: str
@@ -186,6 +192,7 @@ class Technology:
     switches: tuple[SwitchClass, ...]
     controller_power: float = 0.0
     wiring_resistance: float = 0.0
+    sleep_power: float | None = None
 
     @property
     def fingerprint(self) -> str:
@@ -288,6 +295,7 @@ def load_technology(name_or_path: str | Path, *, beside: Path | None = None) -> 
         switches=tuple(SwitchClass(**table.model_dump()) for table in content.switch),
         controller_power=content.overhead.controller_power,
         wiring_resistance=content.overhead.wiring_resistance,
+        sleep_power=content.overhead.sleep_power,
     )
 
 

@@ -42,6 +42,7 @@ class SwitchTable(Section):
     output_charge_voltage: Volts
     output_charge_exponent: Share
     least_area: Area
+    leakage: Annotated[float, quantity("A/mm2", "not negative")] = 0.0
 
 
 class DeratingTable(Section):
@@ -56,6 +57,7 @@ class OverheadTable(Section):
 
     controller_power: Annotated[float, quantity("W", "not negative")] = 0.0
     wiring_resistance: Annotated[float, quantity("ohm", "not negative")] = 0.0
+    sleep_power: Annotated[float | None, quantity("W", "not negative")] = None
 
 
 Table = TypeVar("Table", CapacitorTable, SwitchTable)
