@@ -1,8 +1,8 @@
 """Exact charge balance and potentials of one converter, at any size.
 
 Charge balance at the internal nodes of both phases, ``[D1; D2] q = 0``, fixes the charges up to a factor; the
-same matrix transposed carries Kirchhoff's voltage law and fixes ratio and potentials. Everything is integer
-elimination without fractions (Bareiss 1968), so results are exact at any size.
+same matrix transposed carries Kirchhoff's voltage law and fixes ratio and potentials. Elimination stays in
+integers, so results are exact at any size.
 """
 
 from __future__ import annotations
@@ -112,10 +112,13 @@ def _incidence(words: Sequence[Word], nodes: Sequence[int]) -> tuple[list[list[i
 
 
 def _null_space(matrix: Sequence[Sequence[int]], columns: int) -> list[list[int]]:
-    """Integer basis of the null space, each vector coprime, by fraction-free Gauss-Jordan elimination."""
+    """Integer basis of the null space, each vector coprime: elimination and back substitution in integers.
+
+    Rows are kept coprime, so no entry exceeds a minor of the matrix. Rows without an entry in the pivot's
+    column are left alone: of an incidence matrix those are nearly all.
+    """
     rows = [list(row) for row in matrix]
     pivots: list[int] = []
-    previous = 1
     for column in range(columns):
         rank = len(pivots)
         chosen = next((r for r in range(rank, len(rows)) if rows[r][column]), None)
@@ -124,25 +127,34 @@ def _null_space(matrix: Sequence[Sequence[int]], columns: int) -> list[list[int]
         rows[rank], rows[chosen] = rows[chosen], rows[rank]
         pivot_row = rows[rank]
         pivot = pivot_row[column]
-        for r, row in enumerate(rows):
-            if r != rank:
-                factor = row[column]
-                if factor or pivot != previous:
-                    rows[r] = [
-                        (pivot * a - factor * b) // previous for a, b in zip(row, pivot_row, strict=True)
-                    ]
-        previous = pivot
+        for r in range(chosen + 1, len(rows)):
+            factor = rows[r][column]
+            if factor:
+                reduced = [pivot * a - factor * b for a, b in zip(rows[r], pivot_row, strict=True)]
+                divisor = gcd(*reduced) or 1
+                rows[r] = [value // divisor for value in reduced]
         pivots.append(column)
-    basis = []
-    for column in range(columns):
-        if column not in pivots:
-            vector = [0] * columns
-            vector[column] = previous
-            for r, pivot_column in enumerate(pivots):
-                vector[pivot_column] = -rows[r][column]
-            divisor = gcd(*vector)
-            basis.append([value // divisor for value in vector])
-    return basis
+    free = [column for column in range(columns) if column not in pivots]
+    return [_back_substituted(rows, pivots, column, columns) for column in free]
+
+
+def _back_substituted(
+    rows: Sequence[Sequence[int]], pivots: Sequence[int], free: int, columns: int
+) -> list[int]:
+    """Null vector of an echelon form that has 1 in one free column and 0 in the others, made coprime."""
+    vector = [0] * columns
+    vector[free] = 1
+    for row, column in zip(reversed(rows[: len(pivots)]), reversed(pivots), strict=True):
+        rest = _dot(row, vector)
+        pivot = row[column]
+        if rest % pivot:
+            factor = pivot // gcd(pivot, rest)
+            vector = [factor * value for value in vector]
+            rest *= factor
+        vector[column] = -rest // pivot
+    sign = 1 if vector[free] > 0 else -1
+    divisor = sign * gcd(*vector)
+    return [value // divisor for value in vector]
 
 
 def _dot(left: Iterable[int], right: Iterable[int]) -> int:

@@ -14,20 +14,20 @@ symmetry, unless a capacitor holds no voltage. Without refinement twenty tied ca
 from __future__ import annotations
 
 from itertools import chain, groupby, permutations, product
+from math import lcm
 from typing import TYPE_CHECKING, TypeAlias, TypeVar
 
 from capmuster.enumerate.balance import N_PORTS
 
 if TYPE_CHECKING:
     from collections.abc import Iterator, Sequence
-    from fractions import Fraction
 
     from capmuster.enumerate.balance import Balance, Word
 
 MOST_TRIED = 6
 """Most capacitors whose tied orders are all tried."""
 
-_Invariants: TypeAlias = "tuple[Fraction | int, ...]"
+_Invariants: TypeAlias = tuple[int, int, int, int]
 _Key = TypeVar("_Key", bound="tuple[object, ...] | int")
 
 
@@ -41,22 +41,29 @@ def canonical_words(words: Sequence[Word], balance: Balance) -> tuple[Word, ...]
     balance
         Its exact analysis.
     """
-    return min(_in_phase_order(words, balance, first) for first in (0, 1))[1]
+    # Over their common denominator potentials are integers, which compare faster than fractions.
+    unit = lcm(*(u.denominator for phase in balance.potentials for u in phase))
+    first, second = ([int(u * unit) for u in phase] for phase in balance.potentials)
+    turned = [(c, d, a, b) for a, b, c, d in words]
+    return min(
+        _in_phase_order(words, balance.charges, first, second),
+        _in_phase_order(turned, [-charge for charge in balance.charges], second, first),
+    )[1]
 
 
 def _in_phase_order(
-    words: Sequence[Word], balance: Balance, first: int
+    words: Sequence[Word], charges: Sequence[int], first: Sequence[int], second: Sequence[int]
 ) -> tuple[list[_Invariants], tuple[Word, ...]]:
-    """Sorted invariants and least words with phase ``first`` (0 or 1) put first."""
-    ahead, behind = balance.potentials[first], balance.potentials[1 - first]
+    """Sort the invariants of a wiring, phases as they stand, and find its least words."""
     keyed: list[tuple[_Invariants, Word]] = []
-    for word, voltage, charge in zip(words, balance.voltages, balance.charges, strict=True):
-        taken = charge if first == 0 else -charge
-        plus1, minus1, plus2, minus2 = word if first == 0 else (word[2], word[3], word[0], word[1])
-        if voltage < 0 or (voltage == 0 and taken < 0):
-            plus1, minus1, plus2, minus2 = minus1, plus1, minus2, plus2
-            voltage, taken = -voltage, -taken  # noqa: PLW2901 -- the same capacitor, seen from its other plate
-        keyed.append(((voltage, ahead[minus1], behind[minus2], taken), (plus1, minus1, plus2, minus2)))
+    for (plus1, minus1, plus2, minus2), charge in zip(words, charges, strict=True):
+        voltage = first[plus1] - first[minus1]
+        if voltage < 0 or (voltage == 0 and charge < 0):
+            seen = (-voltage, first[plus1], second[plus2], -charge)
+            keyed.append((seen, (minus1, plus1, minus2, plus2)))
+        else:
+            seen = (voltage, first[minus1], second[minus2], charge)
+            keyed.append((seen, (plus1, minus1, plus2, minus2)))
     keyed.sort(key=lambda pair: pair[0])
     invariants = [key for key, _ in keyed]
     return invariants, _least_words([word for _, word in keyed], _ranks(invariants))
@@ -64,27 +71,26 @@ def _in_phase_order(
 
 def _least_words(words: Sequence[Word], colours: Sequence[int]) -> tuple[Word, ...]:
     """Least words, nodes renamed, among the orders that keep colours sorted."""
-    if len(words) <= MOST_TRIED:
-        return min(nodes_named([words[i] for i in order]) for order in _orders(colours))
-    colours = _refined(words, colours)
-    order = sorted(range(len(words)), key=colours.__getitem__)
-    tied = next((group for group in _runs(order, colours) if len(group) > 1), None)
-    if tied is None:
-        return nodes_named([words[i] for i in order])
-    return min(
-        _least_words(words, [2 * colour - (i == first) for i, colour in enumerate(colours)]) for first in tied
-    )
+    if len(words) > MOST_TRIED and len(set(colours)) < len(words):
+        colours = _refined(words, colours)
+        tied = next((group for group in _runs(colours) if len(group) > 1), None)
+        if tied is not None:
+            return min(
+                _least_words(words, [2 * colour - (i == first) for i, colour in enumerate(colours)])
+                for first in tied
+            )
+    return min(nodes_named([words[i] for i in order]) for order in _orders(colours))
 
 
 def _orders(colours: Sequence[int]) -> Iterator[tuple[int, ...]]:
     """All orders of indices that keep colours sorted."""
-    order = sorted(range(len(colours)), key=colours.__getitem__)
-    for choice in product(*(permutations(group) for group in _runs(order, colours))):
+    for choice in product(*(permutations(group) for group in _runs(colours))):
         yield tuple(chain.from_iterable(choice))
 
 
-def _runs(order: Sequence[int], colours: Sequence[int]) -> list[list[int]]:
-    """Neighbours of one colour."""
+def _runs(colours: Sequence[int]) -> list[list[int]]:
+    """List the indices of each colour, in the order of colours."""
+    order = sorted(range(len(colours)), key=colours.__getitem__)
     return [list(group) for _, group in groupby(order, key=colours.__getitem__)]
 
 

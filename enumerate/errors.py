@@ -38,5 +38,6 @@ class IllPosedError(CapmusterError):
 
 
 def shortened(text: str, most: int = 40) -> str:
-    """Cut what a user gave to a length that an error message can quote."""
-    return text if len(text) <= most else text[: most - 3] + "..."
+    """Cut what a user gave to a length that a message can quote, and escape what would break its line."""
+    plain = "".join(c if c.isprintable() else c.encode("unicode_escape").decode() for c in text[: most + 1])
+    return plain if len(plain) <= most else plain[: most - 3] + "..."

@@ -188,7 +188,8 @@ class Cell(_Wired):
     def __post_init__(self) -> None:
         """Check the wiring and bring it into canonical form."""
         converters = _converters(checked_words(self.words))
-        object.__setattr__(self, "words", min(converter.words for converter in converters))
+        object.__setattr__(self, "words", converters[0].words)
+        object.__setattr__(self, "converters", converters)
 
     @classmethod
     def of(cls, words: Sequence[Sequence[int]]) -> Cell:
@@ -248,10 +249,10 @@ class Cell(_Wired):
             raise WiringError(f"role '{shortened(role)}' is unknown", accepted=", ".join(ROLES))
         return Converter.of(_in_role(self.words, role))
 
-    @property
+    @cached_property
     def converters(self) -> tuple[Converter, ...]:
         """The distinct converters of this cell, in the order of their wiring."""
-        return tuple(sorted(_converters(self.words), key=lambda converter: converter.words))
+        return _converters(self.words)
 
     @property
     def triple(self) -> tuple[int, int, int]:
@@ -272,7 +273,8 @@ def _in_role(words: Sequence[Sequence[int]], role: str) -> list[list[int]]:
     return [[CONVERTER_PORTS.index(role[v]) if v < N_PORTS else int(v) for v in word] for word in words]
 
 
-def _converters(words: Sequence[Sequence[int]]) -> set[Converter]:
+def _converters(words: Sequence[Sequence[int]]) -> tuple[Converter, ...]:
+    """Distinct converters of a wiring over unnamed ports, in the order of their words."""
     found: set[Converter] = set()
     reason: IllPosedError | None = None
     for role in ROLES:
@@ -282,4 +284,4 @@ def _converters(words: Sequence[Sequence[int]]) -> set[Converter]:
             reason = error
     if not found and reason is not None:
         raise reason
-    return found
+    return tuple(sorted(found, key=lambda converter: converter.words))

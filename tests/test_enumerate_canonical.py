@@ -13,7 +13,7 @@ from plain_enumerator import plain_census
 from strategies import census_converters, family_converters, with_renaming
 
 from capmuster.enumerate.balance import analyse
-from capmuster.enumerate.canonical import MOST_TRIED, canonical_words
+from capmuster.enumerate.canonical import MOST_TRIED, _least_words, _refined, canonical_words
 from capmuster.enumerate.canonicalbatch import canonical_batch
 from capmuster.enumerate.census import census
 from capmuster.enumerate.converters import converters
@@ -147,6 +147,34 @@ def test_forty_capacitors_that_tie_in_everything(seed):
     assert Converter.parse(string_chain([1 - bit for bit in reversed(bits)])) == converter
     changed = [*bits[:7], 1 - bits[7], *bits[8:]]
     assert Converter.parse(string_chain(changed)) != converter
+
+
+def loops(*lengths):
+    """Words of nothing but closed loops of capacitors, all alike: refinement sees no difference at all."""
+    words, start = [], N_PORTS
+    for length in lengths:
+        ring = [*range(start, start + length), start]
+        words += [(a, b, 0, 1) for a, b in pairwise(ring)]
+        start += length
+    return words
+
+
+def test_ties_that_refinement_leaves():
+    # No converter looks like this; it makes the search branch. Loops of 3 + 5, 4 + 4 and 8 capacitors have
+    # the same colours throughout, and are told apart only by following each choice to its end.
+    rng = np.random.default_rng(8)
+    forms = {}
+    for lengths in ((8,), (3, 5), (5, 3), (4, 4), (2, 6)):
+        words = loops(*lengths)
+        assert set(_refined(words, [0] * 8)) == {0}
+        found = {_least_words(words, [0] * 8)}
+        for _ in range(4):
+            numbers = np.r_[:N_PORTS, N_PORTS + rng.permutation(8)]
+            renamed = [(*numbers[list(word[:2])].tolist(), 0, 1) for word in rng.permutation(words)]
+            found.add(_least_words(renamed, [0] * 8))
+        assert len(found) == 1
+        forms.setdefault(tuple(sorted(lengths)), found.pop())
+    assert len(set(forms.values())) == len(forms) == 4
 
 
 def test_equal_id_exactly_where_networkx_finds_an_isomorphism():

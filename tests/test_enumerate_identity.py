@@ -139,6 +139,7 @@ def test_malformed_ids(text):
     with pytest.raises(CapmusterError) as error:
         words_of_id(text)
     shown = text if len(text) <= 40 else text[:37] + "..."
+    shown = shown.replace("\n", "\\n")
     assert str(error.value) == f"id '{shown}' is malformed; accepted: {FORM}"
 
 

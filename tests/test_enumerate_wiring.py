@@ -226,7 +226,7 @@ def test_the_json_form():
     ("text", "message"),
     [
         ("", "wiring: '' is no JSON"),
-        ("{", "wiring: '{' is no JSON"),
+        ("{\n\ud800", r"wiring: '{\n\ud800' is no JSON"),
         ("[" * 100_000, "wiring: '" + "[" * 37 + "...' is no JSON"),
         ('{"kind": ' + "9" * 5000 + "}", "wiring: '{\"kind\": 9999999999999999999999999999...' is no JSON"),
         ("[1]", "wiring in JSON: kind is missing"),
