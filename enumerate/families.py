@@ -9,7 +9,6 @@ from __future__ import annotations
 from dataclasses import dataclass
 from fractions import Fraction
 from functools import lru_cache
-from itertools import count
 from typing import TYPE_CHECKING, TypeAlias
 
 from capmuster.enumerate.errors import CapmusterError, shortened
@@ -157,75 +156,76 @@ def _check_size(family: str, size: int, *, least: int) -> None:
         raise CapmusterError(f"{family}: size {size} is too small", accepted=f"{least} or more")
 
 
-@dataclass(frozen=True, slots=True)
-class _Family:
-    name: str
-    sizes: Callable[[int], Iterator[tuple[int, str, Converter]]]
-
-
-def _series_parallels(most: int) -> Iterator[tuple[int, str, Converter]]:
-    for n in range(2, most + 2):
-        yield n, f"N = {n}", series_parallel(n)
-
-
 _NO_RAIL = 2
 """The ladder without a rail between its ports: it has no rail capacitor."""
 _LADDER_NOTE = "; the outermost rail capacitor of each column is left out: redundant between two stiff ports"
 
 
-def _ladders(most: int) -> Iterator[tuple[int, str, Converter]]:
-    for n in count(2):
-        if 2 * n - 3 > most:
-            return
-        for tap in range(1, n // 2 + 1):  # upside down, tap k is tap n - k
-            yield n, f"N = {n}, tap {tap}{_LADDER_NOTE if n > _NO_RAIL else ''}", ladder(n, tap)
+def _series_parallels(n: int) -> Iterator[tuple[int, str, Converter]]:
+    yield n + 1, f"N = {n + 1}", series_parallel(n + 1)
 
 
-def _dicksons(most: int) -> Iterator[tuple[int, str, Converter]]:
-    for n in range(2, most + 2):
-        yield n, f"N = {n}", dickson(n)
+def _ladders(n: int) -> Iterator[tuple[int, str, Converter]]:
+    if n % 2:
+        steps = (n + 3) // 2
+        note = _LADDER_NOTE if steps > _NO_RAIL else ""
+        for tap in range(1, steps // 2 + 1):  # upside down, tap k is tap N - k
+            yield steps, f"N = {steps}, tap {tap}{note}", ladder(steps, tap)
 
 
-def _fibonaccis(most: int) -> Iterator[tuple[int, str, Converter]]:
-    for stages in range(1, most + 1):
-        yield stages, _stages(stages), fibonacci(stages)
+def _dicksons(n: int) -> Iterator[tuple[int, str, Converter]]:
+    yield n + 1, f"N = {n + 1}", dickson(n + 1)
 
 
-def _doubler_chains(most: int, *, alternate: bool = False) -> Iterator[tuple[int, str, Converter]]:
-    for stages in range(2 if alternate else 1, (most + 1) // 2 + 1):
-        yield stages, _stages(stages), doubler_chain(stages, alternate=alternate)
+def _fibonaccis(n: int) -> Iterator[tuple[int, str, Converter]]:
+    yield n, _stages(n), fibonacci(n)
+
+
+def _doubler_chains(n: int) -> Iterator[tuple[int, str, Converter]]:
+    if n % 2:
+        stages = (n + 1) // 2
+        yield stages, _stages(stages), doubler_chain(stages)
+
+
+def _alternating_chains(n: int) -> Iterator[tuple[int, str, Converter]]:
+    if n % 2 and n > 1:  # a single stage has nothing to alternate with
+        stages = (n + 1) // 2
+        yield stages, _stages(stages), doubler_chain(stages, alternate=True)
 
 
 def _stages(number: int) -> str:
     return f"{number} stage{'s' if number > 1 else ''}"
 
 
-_FAMILIES = (
-    _Family("series-parallel", _series_parallels),
-    _Family("ladder", _ladders),
-    _Family("Dickson", _dicksons),
-    _Family("Fibonacci", _fibonaccis),
-    _Family("doubler chain", _doubler_chains),
-    _Family("alternating doubler chain", lambda most: _doubler_chains(most, alternate=True)),
-)
-FAMILY_NAMES = tuple(family.name for family in _FAMILIES)
+_FAMILIES: dict[str, Callable[[int], Iterator[tuple[int, str, Converter]]]] = {
+    "series-parallel": _series_parallels,
+    "ladder": _ladders,
+    "Dickson": _dicksons,
+    "Fibonacci": _fibonaccis,
+    "doubler chain": _doubler_chains,
+    "alternating doubler chain": _alternating_chains,
+}
+"""For each family size, detail and one converter of each of its cells with so many flying capacitors."""
+FAMILY_NAMES = tuple(_FAMILIES)
 """Names of the families, in the order in which a converter lists them."""
 
 
 @lru_cache(maxsize=8)
-def members(most_capacitors: int) -> tuple[Member, ...]:
-    """Every family member with at most so many flying capacitors, in every role, each family's members once.
+def members(most_capacitors: int, least_capacitors: int = 1) -> tuple[Member, ...]:
+    """Every family member within these numbers of flying capacitors, in every role.
 
-    A converter that belongs to two families appears under each of them.
+    Each family lists its members once, from small to large. A converter that belongs to two families appears
+    under each of them.
     """
     found = []
-    for family in _FAMILIES:
+    for family, of_size in _FAMILIES.items():
         seen: set[Converter] = set()
-        for size, detail, base in family.sizes(most_capacitors):
-            for converter in Cell.of(base.words).converters:
-                if converter not in seen:
-                    seen.add(converter)
-                    found.append(Member(family.name, size, detail, converter))
+        for n in range(max(1, least_capacitors), most_capacitors + 1):
+            for size, detail, base in of_size(n):
+                for converter in Cell(base.words).converters:
+                    if converter not in seen:
+                        seen.add(converter)
+                        found.append(Member(family, size, detail, converter))
     return tuple(found)
 
 

@@ -112,6 +112,7 @@ def test_members_are_those_of_the_size_asked_for(most):
     assert all((family, role) in set(keys) for family, one in keys for role in one.cell.converters)
     order = [FAMILY_NAMES.index(member.family) for member in listed]
     assert order == sorted(order)
+    assert members(most, most) == tuple(member for member in listed if member.converter.n == most)
     # None is missing: sizes counted from the definitions.
     expected = {
         "series-parallel": {series_parallel(n).cell for n in range(2, most + 2)},
