@@ -4,9 +4,11 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
+import numpy as np
 from hypothesis import strategies as st
 
 from capmuster.enumerate.converters import converters
+from capmuster.enumerate.errors import CapmusterError
 from capmuster.enumerate.families import dickson, doubler_chain, fibonacci, ladder, series_parallel
 from capmuster.enumerate.wiring import CONVERTER_PORTS, N_PORTS, Cell, Converter
 
@@ -40,6 +42,25 @@ def family_converters(draw: Callable, most: int = 40) -> Converter:
         )
     )
     return draw(st.sampled_from(Cell.of(build().words).converters))
+
+
+@st.composite
+def wandered_converters(draw: Callable, most: int = 14) -> Converter:
+    """Draw a converter of no family: plates of a family member put elsewhere, again and again."""
+    converter = draw(family_converters(most))
+    rng = np.random.default_rng(draw(st.integers(0, 2**32 - 1)))
+    for _ in range(60):
+        words = np.array(converter.words)
+        for i, column in zip(rng.integers(len(words), size=2), rng.integers(4, size=2), strict=True):
+            pairs = words[:, 2 * (column // 2) : 2 * (column // 2) + 2]
+            words[i, column] = rng.integers(int(pairs.max()) + 1)
+        try:
+            other = Converter.of(words)
+        except CapmusterError:
+            continue
+        if not other.balance.degenerate:
+            converter = other
+    return converter
 
 
 @st.composite

@@ -12,14 +12,14 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 from plain_converter import brute_balance
 from scipy.linalg import null_space
-from strategies import census_converters, family_converters
+from strategies import census_converters, family_converters, wandered_converters
 
 from capmuster.enumerate.balance import _null_space, analyse
 from capmuster.enumerate.errors import IllPosedError
 from capmuster.enumerate.families import dickson, doubler_chain, fibonacci, ladder, series_parallel
 from capmuster.enumerate.wiring import N_PORTS, Converter, format_words, parse_words, vertex_name
 
-CONVERTERS = census_converters() | family_converters(most=20)
+CONVERTERS = census_converters() | family_converters(most=20) | wandered_converters()
 
 
 def incidence(words, phase):

@@ -10,7 +10,7 @@ import pytest
 from hypothesis import given, settings
 from plain_converter import ROLES, read_code, same_converter, symmetries_of, wiring_graph
 from plain_enumerator import plain_census
-from strategies import census_converters, family_converters, with_renaming
+from strategies import census_converters, family_converters, wandered_converters, with_renaming
 
 from capmuster.enumerate.balance import analyse
 from capmuster.enumerate.canonical import MOST_TRIED, _least_words, _refined, canonical_words
@@ -50,7 +50,7 @@ def shuffled(words, rng):
     return ordered[:, [2, 3, 0, 1]] if rng.random() < 0.5 else ordered
 
 
-@given(with_renaming(census_converters() | family_converters()))
+@given(with_renaming(census_converters() | family_converters() | wandered_converters()))
 @settings(max_examples=80)
 def test_relabelling_keeps_words_and_id(drawn):
     converter, words = drawn
@@ -202,6 +202,14 @@ def test_equal_id_exactly_where_networkx_finds_an_isomorphism():
 def test_isomorphism_of_four_capacitors(drawn, other):
     converter, words = drawn
     assert same_converter(converter.code, Converter(words).code)
+    assert same_converter(converter.code, other.code) == (converter.id == other.id)
+
+
+@given(with_renaming(wandered_converters()), wandered_converters())
+@settings(max_examples=30)
+def test_isomorphism_of_larger_converters(drawn, other):
+    converter, words = drawn
+    assert same_converter(converter.code, format_words(words))
     assert same_converter(converter.code, other.code) == (converter.id == other.id)
 
 

@@ -11,7 +11,7 @@ from hypothesis import strategies as st
 from plain_converter import brute_clean, brute_utilisation
 from plain_enumerator import plain_census
 from scipy.optimize import minimize
-from strategies import census_converters, family_converters, with_renaming
+from strategies import census_converters, family_converters, wandered_converters, with_renaming
 
 from capmuster.enumerate.converters import converters
 from capmuster.enumerate.errors import IllPosedError
@@ -20,7 +20,7 @@ from capmuster.enumerate.wiring import Converter
 from capmuster.rank.switchtable import score
 from capmuster.rank.utilisation import charge_flow, lifted_energy
 
-ANY = census_converters() | family_converters(most=20)
+ANY = census_converters() | family_converters(most=20) | wandered_converters()
 
 
 @given(with_renaming(ANY))
