@@ -9,6 +9,7 @@ import numpy as np
 
 from capmuster.enumerate.attachments import attachments
 from capmuster.enumerate.laws import laws
+from capmuster.enumerate.threads import one_thread
 
 if TYPE_CHECKING:
     from collections.abc import Iterator
@@ -94,7 +95,8 @@ def attached_cells(table: SkeletonTable, law: LawTable, tally: Tally) -> Iterato
 def tally_cells(table: SkeletonTable, tally: Tally) -> None:
     """Count the cells of skeletons, and do nothing else with them."""
     block = 1024
-    for start in range(0, len(table), block):
-        part = table.take(slice(start, start + block))
-        for _ in attached_cells(part, laws(part), tally):
-            pass
+    with one_thread():
+        for start in range(0, len(table), block):
+            part = table.take(slice(start, start + block))
+            for _ in attached_cells(part, laws(part), tally):
+                pass

@@ -1,154 +1,206 @@
 """The canonical form of many converters at once; the same definition as `capmuster.enumerate.canonical`.
 
-Invariants are sorted for all rows together. Rows in which capacitors tie in every invariant try all orders of
-their capacitors, still in one batch.
+Up to six capacitors everything about a capacitor that the order depends on, and the vertices of its plates,
+fits into one integer, so sorting capacitors is sorting integers. One converter per column. Converters in
+which capacitors tie in every invariant try all orders of these, still together.
 """
 
 from __future__ import annotations
 
-from dataclasses import replace
+from dataclasses import dataclass, replace
 from itertools import permutations
-from typing import TYPE_CHECKING, TypeVar
+from typing import TYPE_CHECKING, TypeAlias
 
 import numpy as np
+
+from capmuster.enumerate.sorting import sort_columns
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from capmuster.enumerate.converters import ConverterTable
 
-_PORTS = 3
-_T = TypeVar("_T", bound=np.generic)
+    _Ints: TypeAlias = NDArray[np.int64]
+
+_AT_ONCE = 1 << 14
+_VERTEX_BITS = 3
+_VERTEX = (1 << _VERTEX_BITS) - 1
+_WORD_BITS = 4 * _VERTEX_BITS
+_NAME_BITS = 4
+_NAME = (1 << _NAME_BITS) - 1
+_PORTS_NAMED = 0x321  # each vertex's name plus one, four bits each: ports keep theirs, nodes have none yet
+_FIRST_NODE = 3
+_WORDS_PER_NUMBER = 5
 
 
 def canonical_batch(table: ConverterTable) -> ConverterTable:
     """Bring every row into canonical form.
 
-    The arrays of ``table`` may stand in any capacitor order, polarity, phase order and node names.
+    The arrays of ``table`` may stand in any capacitor order, polarity, phase order and node names; at most
+    six capacitors.
     """
-    if not len(table):
+    parts = [_canonical(table.take(slice(k, k + _AT_ONCE))) for k in range(0, len(table), _AT_ONCE)]
+    if not parts:
         return table
-    ahead, behind = (_Ordered(table, first) for first in (0, 1))
-    comparison = _compare(ahead.keys, behind.keys)
-    comparison = np.where(comparison == 0, _compare(ahead.packed(), behind.packed()), comparison)
-    swap = comparison > 0
-
-    def pick(a: NDArray[_T], b: NDArray[_T]) -> NDArray[_T]:
-        return np.where(swap.reshape(-1, *[1] * (a.ndim - 1)), b, a)
-
     return replace(
         table,
-        words=pick(ahead.words, behind.words),
-        charges=pick(ahead.charges, behind.charges),
-        potentials=pick(ahead.potentials, behind.potentials),
-        nodes=pick(ahead.nodes, behind.nodes),
+        **{
+            name: np.concatenate([getattr(part, name) for part in parts])
+            for name in ("words", "charges", "potentials", "nodes")
+        },
     )
 
 
-class _Ordered:
-    """All rows with phase ``first`` put first, capacitors sorted, nodes renamed."""
-
-    def __init__(self, table: ConverterTable, first: int) -> None:
-        columns = [0, 1, 2, 3] if first == 0 else [2, 3, 0, 1]
-        self.nodes = table.nodes[:, [first, 1 - first]]
-        self.potentials = table.potentials[:, [first, 1 - first]]
-        words = table.words[:, :, columns]
-        charges = table.charges if first == 0 else -table.charges
-        voltages = table.voltages
-        flip = (voltages < 0) | ((voltages == 0) & (charges < 0))
-        words = np.where(flip[:, :, None], words[:, :, [1, 0, 3, 2]], words)
-        charges = np.where(flip, -charges, charges)
-        minus = [
-            np.take_along_axis(self.potentials[:, phase], words[:, :, 2 * phase + 1].astype(np.intp), axis=1)
-            for phase in (0, 1)
-        ]
-        keys = _combined([np.abs(voltages), *minus, charges])
-        order = np.argsort(keys, axis=1, kind="stable")
-        self.keys = np.take_along_axis(keys, order, axis=1)
-        words = np.take_along_axis(words, order[:, :, None], axis=1)
-        self.charges = np.take_along_axis(charges, order, axis=1)
-        self.words, names = _nodes_named(words)
-        tied = np.flatnonzero(np.any(self.keys[:, 1:] == self.keys[:, :-1], axis=1))
-        if len(tied):
-            self.words[tied], chosen_names = _least_order(words[tied], self.keys[tied])
-            for phase in (0, 1):
-                names[phase][tied] = chosen_names[phase]
-        for phase in (0, 1):
-            moved = np.zeros_like(self.potentials[:, phase])
-            np.put_along_axis(moved, names[phase].astype(np.intp), self.potentials[:, phase], axis=1)
-            self.potentials[:, phase] = moved
-
-    def packed(self) -> NDArray[np.uint64]:
-        return _packed(self.words)
+def _canonical(table: ConverterTable) -> ConverterTable:
+    plates = _Plates.of(table)
+    ahead, behind = (_sorted_keys(plates, first) for first in (0, 1))
+    comparison = _compare(ahead >> _WORD_BITS, behind >> _WORD_BITS)
+    swap = comparison > 0
+    keys = np.where(swap, behind, ahead)
+    words, names = _named_least(keys)
+    even = np.flatnonzero(comparison == 0)
+    if len(even):
+        other_words, other_names = _named_least(behind[:, even])
+        better = _compare(_packed(other_words), _packed(words[:, :, even])) < 0
+        chosen = even[better]
+        swap[chosen] = True
+        keys[:, chosen] = behind[:, chosen]
+        words[:, :, chosen] = other_words[:, :, better]
+        names[:, chosen] = other_names[:, better]
+    potentials = np.where(swap[:, None, None], table.potentials[:, ::-1], table.potentials)
+    return replace(
+        table,
+        words=np.ascontiguousarray(np.moveaxis(words, 2, 0).astype(np.int8)),
+        charges=np.ascontiguousarray(plates.charges_in(keys).T),
+        potentials=_renamed(potentials, names),
+        nodes=np.where(swap[:, None], table.nodes[:, ::-1], table.nodes),
+    )
 
 
-def _combined(parts: list[NDArray[np.int64]]) -> NDArray[np.int64]:
-    """Fold integers into one sortable number; the parts are bounded, so the fold is exact."""
-    span = 2 * max(int(np.abs(part).max()) for part in parts) + 1
-    if span ** len(parts) >= 2**63:  # ranks of the distinct values sort alike and stay small
-        parts = [np.unique(part, return_inverse=True)[1].reshape(part.shape) for part in parts]
-        span = max(int(part.max()) for part in parts) + 1
-    result = np.zeros_like(parts[0])
-    for part in parts:
-        result = result * span + part
-    return result
+@dataclass(frozen=True, slots=True)
+class _Plates:
+    """What the order of capacitors depends on, one converter per column.
+
+    ``vertices`` and ``potentials`` have shape (2 phases, 2 plates, n, N); ``charges`` has shape (n, N).
+    """
+
+    vertices: _Ints
+    potentials: _Ints
+    charges: _Ints
+
+    @classmethod
+    def of(cls, table: ConverterTable) -> _Plates:
+        rows, n = table.words.shape[:2]
+        vertices = table.words.astype(np.int64).reshape(rows, n, 2, 2).transpose(2, 3, 1, 0)
+        width = table.potentials.shape[2]
+        start = np.arange(rows) * (2 * width)
+        potentials = np.stack(
+            [table.potentials.reshape(-1)[start + phase * width + vertices[phase]] for phase in (0, 1)]
+        )
+        return cls(np.ascontiguousarray(vertices), potentials, np.ascontiguousarray(table.charges.T))
+
+    @property
+    def most_charge(self) -> int:
+        return int(np.abs(self.charges).max())
+
+    def charges_in(self, keys: _Ints) -> _Ints:
+        """Read the charges back from keys."""
+        return np.asarray((keys >> _WORD_BITS) % (2 * self.most_charge + 1) - self.most_charge)
 
 
-def _nodes_named(words: NDArray[np.int8]) -> tuple[NDArray[np.int8], list[NDArray[np.int8]]]:
-    """Name internal nodes in their order of appearance; also the new number of each vertex, two (N, n + 2)."""
-    rows, n, _ = words.shape
-    result = words.copy()
-    names = []
+def _sorted_keys(plates: _Plates, first: int) -> _Ints:
+    """Sorted invariants of each capacitor and its word, with phase ``first`` put first; shape (n, N)."""
+    second = 1 - first
+    taken = plates.charges if first == 0 else -plates.charges
+    voltages = plates.potentials[0, 0] - plates.potentials[0, 1]
+    flip = (voltages < 0) | ((voltages == 0) & (taken < 0))
+    minus = [np.where(flip, plates.potentials[p, 0], plates.potentials[p, 1]) for p in (first, second)]
+    most = int(np.abs(plates.potentials).max())
+    keys = np.abs(voltages)
+    for invariant in minus:
+        keys = keys * (2 * most + 1) + (invariant + most)
+    keys = keys * (2 * plates.most_charge + 1) + np.where(flip, -taken, taken) + plates.most_charge
+    for phase in (first, second):
+        plus, minus_vertex = plates.vertices[phase]
+        for vertex in (np.where(flip, minus_vertex, plus), np.where(flip, plus, minus_vertex)):
+            keys = (keys << _VERTEX_BITS) | vertex
+    sort_columns(keys)
+    return keys
+
+
+def _named_least(keys: _Ints) -> tuple[_Ints, _Ints]:
+    """Least words among the orders that keep the invariants sorted, and the names of their nodes."""
+    invariants = keys >> _WORD_BITS
+    words, names = _named(keys)
+    tied = np.flatnonzero(np.any(invariants[1:] == invariants[:-1], axis=0))
+    if len(tied):
+        best = _packed(words[:, :, tied])
+        for order in permutations(range(len(keys))):
+            index = list(order)
+            kept = np.flatnonzero(np.all(invariants[index][:, tied] == invariants[:, tied], axis=0))
+            if not len(kept) or index == sorted(index):
+                continue
+            other_words, other_names = _named(keys[index][:, tied[kept]])
+            packed = _packed(other_words)
+            better = _compare(packed, best[:, kept]) < 0
+            chosen = kept[better]
+            best[:, chosen] = packed[:, better]
+            words[:, :, tied[chosen]] = other_words[:, :, better]
+            names[:, tied[chosen]] = other_names[:, better]
+    return words, names
+
+
+def _named(keys: _Ints) -> tuple[_Ints, _Ints]:
+    """Words with internal nodes named in their order of appearance, shape (n, 4, N), and the names, (2, N).
+
+    Names are packed as in `_PORTS_NAMED`, for phase 1 and phase 2.
+    """
+    n, columns = keys.shape
+    words = np.empty((n, 4, columns), dtype=np.int64)
+    names = np.full((2, columns), _PORTS_NAMED, dtype=np.int64)
+    following = np.full((2, columns), _FIRST_NODE + 1, dtype=np.int64)
+    for i in range(n):
+        for place in range(4):
+            phase = place // 2
+            vertex = (keys[i] >> (_VERTEX_BITS * (3 - place))) & _VERTEX
+            at = vertex * _NAME_BITS
+            name = (names[phase] >> at) & _NAME
+            new = name == 0
+            fresh = np.where(new, following[phase], 0)
+            names[phase] |= fresh << at
+            following[phase] += new
+            words[i, place] = name + fresh - 1
+    return words, names
+
+
+def _renamed(potentials: _Ints, names: _Ints) -> _Ints:
+    """Move the potentials of internal nodes to their new names; unused vertices stay 0."""
+    rows, _, width = potentials.shape
+    result = np.zeros((rows, 2, width + 1), dtype=potentials.dtype)  # the last place takes unused vertices
     for phase in (0, 1):
-        sequence = words[:, :, 2 * phase : 2 * phase + 2].reshape(rows, 2 * n)
-        nodes = np.arange(_PORTS, n + 2, dtype=np.int8)
-        seen = sequence[:, None, :] == nodes[:, None]
-        first = np.where(seen.any(axis=2), seen.argmax(axis=2), 2 * n)
-        rank = np.argsort(np.argsort(first, axis=1, kind="stable"), axis=1, kind="stable")
-        new = np.concatenate([np.tile(np.arange(_PORTS), (rows, 1)), rank + _PORTS], axis=1).astype(np.int8)
-        renamed = np.take_along_axis(new, sequence.astype(np.intp), axis=1)
-        result[:, :, 2 * phase : 2 * phase + 2] = renamed.reshape(rows, n, 2)
-        names.append(new)
-    return result, names
+        for vertex in range(width):
+            name = (names[phase] >> (vertex * _NAME_BITS)) & _NAME
+            result[np.arange(rows), phase, name - 1] = potentials[:, phase, vertex]
+    result[:, :, width] = 0
+    return np.ascontiguousarray(result[:, :, :width])
 
 
-def _least_order(
-    words: NDArray[np.int8], keys: NDArray[np.int64]
-) -> tuple[NDArray[np.int8], list[NDArray[np.int8]]]:
-    """Least words among the capacitor orders that keep the keys sorted."""
-    n = words.shape[1]
-    best, best_names = _nodes_named(words)
-    for order in permutations(range(n)):
-        index = list(order)
-        rows = np.flatnonzero(np.all(keys[:, index] == keys, axis=1))
-        if not len(rows):
-            continue
-        candidate, names = _nodes_named(words[rows][:, index])
-        better = _compare(_packed(candidate), _packed(best[rows])) < 0
-        best[rows[better]] = candidate[better]
-        for phase in (0, 1):
-            best_names[phase][rows[better]] = names[phase][better]
-    return best, best_names
+def _packed(words: _Ints) -> _Ints:
+    """Words as a few sortable numbers per column, most significant first."""
+    n = len(words)
+    numbers = []
+    for start in range(0, n, _WORDS_PER_NUMBER):
+        number = np.zeros(words.shape[2], dtype=np.int64)
+        for word in words[start : start + _WORDS_PER_NUMBER]:
+            for vertex in word:
+                number = (number << _VERTEX_BITS) | vertex
+        numbers.append(number)
+    return np.stack(numbers)
 
 
-def _packed(words: NDArray[np.int8]) -> NDArray[np.uint64]:
-    """Words as a few sortable numbers per row, most significant first, 5 bits per vertex."""
-    rows, n, _ = words.shape
-    flat = words.reshape(rows, 4 * n).astype(np.uint64)
-    per_number = 12
-    parts = []
-    for start in range(0, 4 * n, per_number):
-        number = np.zeros(rows, dtype=np.uint64)
-        for column in range(start, min(start + per_number, 4 * n)):
-            number = (number << np.uint64(5)) | flat[:, column]
-        parts.append(number)
-    return np.stack(parts, axis=1)
-
-
-def _compare(left: NDArray[np.generic], right: NDArray[np.generic]) -> NDArray[np.int64]:
-    """Compare rows lexicographically: -1, 0 or 1 for each, shape (N,)."""
-    result = np.zeros(len(left), dtype=np.int64)
-    for column in reversed(range(left.shape[1])):
-        a, b = left[:, column], right[:, column]
-        result = np.where(a < b, -1, np.where(a > b, 1, result))
+def _compare(left: _Ints, right: _Ints) -> _Ints:
+    """Compare columns lexicographically: -1, 0 or 1 for each."""
+    result = np.zeros(left.shape[1], dtype=np.int64)
+    for a, b in zip(left[::-1], right[::-1], strict=True):
+        result = np.where(a == b, result, np.where(a < b, -1, 1))
     return result

@@ -21,6 +21,9 @@ from capmuster.enumerate.skeletons import skeletons
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
+    from capmuster.enumerate.skeletons import SkeletonTable
+    from capmuster.enumerate.tally import Triple
+
 CENSUS_REACH = 5
 """Most flying capacitors that the census lists."""
 _ROWS_AT_ONCE = 1 << 16
@@ -114,7 +117,7 @@ class CellTable:
     def voltages(self) -> NDArray[np.int32]:
         """Capacitor voltages in the unit of `potentials`, shape (N, n)."""
         plates = np.take_along_axis(
-            self.potentials[:, 0, :], self.words[:, :, :2].reshape(len(self), -1).astype(np.intp), 1
+            self.potentials[:, 0, :], self.words[:, :, :2].reshape(len(self), 2 * self.n).astype(np.intp), 1
         )
         pairs = plates.reshape(len(self), self.n, 2)
         return np.asarray(pairs[:, :, 0] - pairs[:, :, 1])
@@ -159,30 +162,55 @@ def check_reach(n: int, most: int = CENSUS_REACH) -> None:
         raise CapmusterError(f"capacitors: {n} is beyond the census", accepted=f"1 to {most}")
 
 
-def addresses(n: int) -> Addresses:
-    """List the cells in which two or three ports exchange charge, skeleton by skeleton."""
+def addresses(n: int, triple: Triple | None = None) -> Addresses:
+    """List the cells in which two or three ports exchange charge, skeleton by skeleton.
+
+    Parameters
+    ----------
+    n
+        Number of flying capacitors.
+    triple
+        If given, only cells whose port charges are in this proportion.
+    """
     table = skeletons(n)
     law = laws(table)
     parts = []
     for row in range(len(table)):
         outer = attachments(table, row)
         weights = law.weights[row, : law.slots[row]]
-        charges = [weights @ (outer.letters == port) for port in (0, 1)]
-        exchanging = (charges[0] != 0) | (charges[1] != 0)
-        parts.append((row, outer.values[exchanging], outer.stabiliser[exchanging], outer.mirror[exchanging]))
+        a, b = (weights @ (outer.letters == port) for port in (0, 1))
+        wanted = np.flatnonzero((a != 0) | (b != 0) if triple is None else _in_proportion(a, b, triple))
+        parts.append(outer.take(wanted))
     return Addresses(
         n,
-        np.repeat(np.arange(len(table), dtype=np.int32), [len(part[1]) for part in parts]),
-        np.concatenate([part[1] for part in parts]),
-        np.concatenate([part[2] for part in parts]),
-        np.concatenate([part[3] for part in parts]),
+        np.repeat(np.arange(len(table), dtype=np.int32), [len(part.values) for part in parts]),
+        np.concatenate([part.values for part in parts]),
+        np.concatenate([part.stabiliser for part in parts]),
+        np.concatenate([part.mirror for part in parts]),
     )
 
 
-def cells_at(where: Addresses) -> CellTable:
-    """Work out wiring, charges and potentials of cells by their addresses."""
+def _in_proportion(a: NDArray[np.int64], b: NDArray[np.int64], triple: Triple) -> NDArray[np.bool_]:
+    """Where port charges a, b and -a - b are, but for order and signs, in the proportion of a triple."""
+    charges = np.sort(np.abs(np.stack([a, b, a + b])), axis=0)
+    small, middle, large = charges
+    return np.asarray(
+        (large > 0) & (small * triple[2] == large * triple[0]) & (middle * triple[2] == large * triple[1])
+    )
+
+
+def cells_at(where: Addresses, table: SkeletonTable | None = None) -> CellTable:
+    """Work out wiring, charges and potentials of cells by their addresses.
+
+    Parameters
+    ----------
+    where
+        The addresses.
+    table
+        The skeletons that they refer to, if not the whole list of `skeletons`.
+    """
     n, rows = where.n, len(where)
-    table = skeletons(n)
+    table = skeletons(n) if table is None else table
     law = laws(table)
     result = CellTable(
         words=np.empty((rows, n, 4), np.int8),

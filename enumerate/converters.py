@@ -5,15 +5,16 @@ from __future__ import annotations
 from dataclasses import dataclass
 from fractions import Fraction
 from functools import lru_cache
-from itertools import permutations
 from math import gcd
 from typing import TYPE_CHECKING
 
 import numpy as np
 
+from capmuster.enumerate.attachments import EXCHANGES
 from capmuster.enumerate.canonicalbatch import canonical_batch
-from capmuster.enumerate.census import census
+from capmuster.enumerate.census import addresses, cells_at, census, check_reach
 from capmuster.enumerate.identity import MOST_READABLE, converter_id, id_of_number, wiring_number
+from capmuster.enumerate.tally import triple_of
 from capmuster.enumerate.wiring import Converter, format_words
 
 if TYPE_CHECKING:
@@ -22,8 +23,13 @@ if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from capmuster.enumerate.census import CellTable
+    from capmuster.enumerate.tally import Triple
 
-_G, _I, _O = range(3)
+_I, _O = 1, 2
+ROLES = EXCHANGES
+"""The names that ports A, B, C take: 0 = G, 1 = I, 2 = O; row k is role k of `capmuster.enumerate.wiring`."""
+_ORDER = np.array([9, 3, 1])
+_LETTERS = np.frombuffer(b"GIOabcdefghijklmnopqrstuvwxyz", dtype=np.uint8)
 
 
 @dataclass(frozen=True, slots=True)
@@ -54,7 +60,7 @@ class ConverterTable:
     nodes: NDArray[np.int8]
 
     def __len__(self) -> int:
-        """Number of converters."""
+        """Count the converters."""
         return len(self.words)
 
     @property
@@ -87,6 +93,25 @@ class ConverterTable:
         """Wiring code of one converter."""
         return format_words(self.words[row].tolist())
 
+    def codes(self) -> list[str]:
+        """Wiring code of every converter."""
+        count, n = len(self), self.n
+        if n + 2 > len(_LETTERS):
+            return [self.code(row) for row in range(count)]
+        # Every vertex is one letter, so all codes are equally long and can be set like type.
+        text = np.full((count, n, 8), ord(" "), dtype=np.uint8)
+        text[:, :, [0, 2, 4, 6]] = _LETTERS[self.words]
+        text[:, :, [1, 5]] = ord("-")
+        text[:, :, 3] = ord("/")
+        width = 8 * n - 1
+        return [
+            code.decode()
+            for code in np.ascontiguousarray(text.reshape(count, 8 * n)[:, :width])
+            .view(f"S{width}")
+            .reshape(-1)
+            .tolist()
+        ]
+
     def ids(self) -> list[str]:
         """Id of every converter."""
         if self.n > MOST_READABLE:
@@ -112,55 +137,86 @@ def _plate_potentials(
 def converters(n: int, ratio: Fraction | None = None) -> ConverterTable:
     """Return the census converters of exactly ``n`` capacitors, of one ratio or of all.
 
+    All converters of five capacitors are some eight million; `capmuster.rank.candidates` gives them ratio by
+    ratio, from a file.
+
     Raises
     ------
     CapmusterError
         When ``n`` is beyond the census.
     """
-    return converters_of(census(n), ratio)
+    check_reach(n)
+    cells = census(n) if ratio is None else cells_at(addresses(n, triple_of_ratio(ratio)))
+    return converters_of(cells, ratio)
+
+
+def triple_of_ratio(ratio: Fraction) -> Triple:
+    """Triple of the cells that reach a ratio other than 0; (0, 1, 1) for M = 1."""
+    return triple_of(ratio.numerator, -ratio.denominator)
 
 
 def converters_of(cells: CellTable, ratio: Fraction | None = None) -> ConverterTable:
     """Give cells all their roles (of one ratio or of all); a role that a symmetry repeats is given once."""
-    tables = [_in_role(cells, role, ratio) for role in permutations(range(3))]
+    cells = cells.take(~cells.degenerate)
+    rows, roles = roles_of(cells.port_charges, cells.mirror, ratio)
+    return in_roles(cells.take(rows), roles)
+
+
+def roles_of(
+    port_charges: NDArray[np.integer], mirror: NDArray[np.int8], ratio: Fraction | None = None
+) -> tuple[NDArray[np.intp], NDArray[np.int8]]:
+    """List the distinct roles of cells, of one ratio or of all.
+
+    Parameters
+    ----------
+    port_charges
+        Charges of ports A, B, C, shape (N, 3).
+    mirror
+        Where the cell's symmetries send A, B, C, shape (N, 3).
+    ratio
+        The ratio, or None.
+
+    Returns
+    -------
+    rows, roles
+        Row of the cell, and row of `ROLES`, for each converter.
+    """
+    found_rows, found_roles = [], []
+    for index, role in enumerate(ROLES):
+        g_in, g_out = (port_charges[:, int(np.flatnonzero(role == name)[0])] for name in (_I, _O))
+        wanted = (g_in != 0) & (g_out != 0)
+        if ratio is not None:
+            wanted &= g_in * ratio.denominator == -ratio.numerator * g_out
+        rows = np.flatnonzero(wanted)
+        # A symmetry of the cell sends this role to another one: the lesser of the two stands for both.
+        rows = rows[int(role @ _ORDER) <= role[mirror[rows]] @ _ORDER]
+        found_rows.append(rows)
+        found_roles.append(np.full(len(rows), index, dtype=np.int8))
+    return np.concatenate(found_rows), np.concatenate(found_roles)
+
+
+def in_roles(cells: CellTable, roles: NDArray[np.int8]) -> ConverterTable:
+    """Name the ports of each cell by its row of `ROLES`; the converters come in canonical form."""
+    count, n = len(cells), cells.n
+    names = np.concatenate([ROLES[roles], np.tile(np.arange(3, n + 3, dtype=np.int8), (count, 1))], axis=1)
+    words = np.take_along_axis(names, cells.words.reshape(count, 4 * n).astype(np.intp), axis=1)
+    port = np.argsort(ROLES, axis=1)[roles]
+    order = np.concatenate([port, np.tile(np.arange(3, n + 2), (count, 1))], axis=1)
+    potentials = np.take_along_axis(cells.potentials, order[:, None, :], axis=2).astype(np.int64)
+    used = np.arange(n + 2) < (cells.nodes[:, :, None] + 3)
+    potentials = np.where(used, potentials - potentials[:, :, :1], 0)
+    sign = np.sign(potentials[:, 0, _I])
+    g = np.take_along_axis(cells.port_charges, port, axis=1).astype(np.int64)
+    flow = np.sign(g[:, _I])
     return canonical_batch(
         ConverterTable(
-            *(np.concatenate([getattr(t, name) for t in tables]) for name in ConverterTable.__slots__)
+            words=words.reshape(count, n, 4),
+            charges=cells.charges.astype(np.int64) * flow[:, None],
+            port_charges=g * flow[:, None],
+            potentials=potentials * sign[:, None, None],
+            scale=potentials[:, 0, _I] * sign,
+            nodes=cells.nodes,
         )
-    )
-
-
-def _in_role(cells: CellTable, role: tuple[int, ...], ratio: Fraction | None) -> ConverterTable:
-    """Cells with ports A, B, C named ``role`` (0 = G, 1 = I, 2 = O), in no canonical form yet."""
-    port = [role.index(name) for name in (_G, _I, _O)]
-    names = np.array(role, dtype=np.int8)
-    g = cells.port_charges[:, port]
-    wanted = (g[:, _I] != 0) & (g[:, _O] != 0)
-    if ratio is not None:
-        wanted &= g[:, _I] * ratio.denominator == -ratio.numerator * g[:, _O]
-    # A symmetry of the cell sends this role to another one: the lesser of the two stands for both.
-    image = names[cells.mirror] @ np.array([9, 3, 1])
-    wanted &= int(names @ np.array([9, 3, 1])) <= image
-    wanted &= ~cells.degenerate
-    kept = cells.take(wanted)
-    g = kept.port_charges[:, port].astype(np.int64)
-    words = kept.words
-    new = np.concatenate([names, np.arange(3, kept.n + 3, dtype=np.int8)])[words]
-    potentials = kept.potentials.astype(np.int64)
-    order = port + list(range(3, kept.n + 2))
-    potentials = potentials[:, :, order]
-    ground = potentials[:, :, :1].copy()
-    used = np.arange(kept.n + 2) < (kept.nodes[:, :, None] + 3)
-    potentials = np.where(used, potentials - ground, 0)
-    sign = np.sign(potentials[:, 0, _I])
-    flow = np.sign(g[:, _I])
-    return ConverterTable(
-        words=new,
-        charges=kept.charges.astype(np.int64) * flow[:, None],
-        port_charges=g * flow[:, None],
-        potentials=potentials * sign[:, None, None],
-        scale=potentials[:, 0, _I] * sign,
-        nodes=kept.nodes,
     )
 
 

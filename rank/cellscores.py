@@ -9,7 +9,6 @@ cells together, in integers of two bytes with one cell per column.
 from __future__ import annotations
 
 from dataclasses import dataclass
-from functools import lru_cache
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -17,10 +16,11 @@ import numpy as np
 from capmuster.enumerate.attached import MOST_AT_ONCE, attached_cells
 from capmuster.enumerate.attachments import N_PORTS
 from capmuster.enumerate.laws import laws
+from capmuster.enumerate.sorting import comparators
 from capmuster.rank.clusterforms import COUNT_BITS, cluster_forms
 
 if TYPE_CHECKING:
-    from collections.abc import Iterator
+    from collections.abc import Iterator, Mapping, Sequence
 
     from numpy.typing import NDArray
 
@@ -77,6 +77,45 @@ class CellScores:
     def __len__(self) -> int:
         """Count the cells."""
         return len(self.skeleton)
+
+    @classmethod
+    def of(cls, columns: Mapping[str, NDArray[np.integer]], clean: NDArray[np.bool_]) -> CellScores:
+        """Make a table of integer columns of any type."""
+        return cls(**{name: columns[name].astype(kind) for name, kind in _TYPES.items()}, clean=clean)
+
+    @classmethod
+    def empty(cls) -> CellScores:
+        """Make a table without cells."""
+        return cls(
+            **{name: np.zeros(0, kind) for name, kind in _TYPES.items()}, clean=np.zeros(0, dtype=bool)
+        )
+
+    def take(self, rows: NDArray[np.bool_] | NDArray[np.intp] | slice) -> CellScores:
+        """Return the chosen rows as a table."""
+        return CellScores(*(getattr(self, name)[rows] for name in self.__slots__))
+
+
+_TYPES = {
+    "skeleton": np.int32,
+    "attachment": np.int32,
+    "mirror": np.int8,
+    "charge_b": np.int16,
+    "charge_c": np.int16,
+    "first_b": np.int16,
+    "first_c": np.int16,
+    "capacitor_sum": np.int32,
+    "highest_capacitor": np.int16,
+    "switch_sum": np.int32,
+    "highest_blocking": np.int16,
+    "switches": np.int16,
+}
+
+
+def concatenate(tables: Sequence[CellScores]) -> CellScores:
+    """Put tables behind each other."""
+    if not tables:
+        return CellScores.empty()
+    return CellScores(*(np.concatenate([getattr(t, name) for t in tables]) for name in CellScores.__slots__))
 
 
 def score_cells(table: SkeletonTable, first: int, tally: Tally) -> Iterator[CellScores]:
@@ -241,27 +280,10 @@ class _Chains:
 
 def _sort(codes: _Ints, levels: _Ints) -> None:
     """Sort levels along the first axis, in place, and carry the codes along."""
-    for i, j in _comparators(len(levels)):
+    for i, j in comparators(len(levels)):
         swap = -(levels[i] > levels[j]).astype(np.int16)
         low, high = np.minimum(levels[i], levels[j]), np.maximum(levels[i], levels[j])
         levels[i], levels[j] = low, high
         change = (codes[i] ^ codes[j]) & swap
         codes[i] ^= change
         codes[j] ^= change
-
-
-@lru_cache(maxsize=16)
-def _comparators(size: int) -> tuple[tuple[int, int], ...]:
-    """Batcher's merge exchange (Knuth, The Art of Computer Programming, vol. 3, 5.2.2, algorithm M)."""
-    found = []
-    top = 1 << max((size - 1).bit_length() - 1, 0)
-    p = top
-    while p and size > 1:
-        q, r, d = top, 0, p
-        while True:
-            found += [(i, i + d) for i in range(size - d) if i & p == r]
-            if q == p:
-                break
-            d, q, r = q - p, q // 2, p
-        p //= 2
-    return tuple(found)

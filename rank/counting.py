@@ -1,18 +1,25 @@
-"""The census of exactly n capacitors in numbers, with both routes of its certificate."""
+"""The cells of exactly n capacitors in numbers, with both routes of the certificate."""
 
 from __future__ import annotations
 
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
-from capmuster.enumerate.census import census
-from capmuster.enumerate.certificate import certify
-from capmuster.rank.switchtable import score
+from capmuster.enumerate.census import CENSUS_REACH, check_reach
+from capmuster.enumerate.certificate import COUNT_REACH, certificate_of
+from capmuster.enumerate.tally import Tally
+from capmuster.rank.cellscores import score_cells
+from capmuster.rank.scoredcensus import silent
+from capmuster.rank.shards import run_shards
 
 if TYPE_CHECKING:
+    from collections.abc import Callable
+
     import pandas as pd
 
     from capmuster.enumerate.certificate import Certificate
+    from capmuster.rank.scoredcensus import Note
+    from capmuster.rank.shards import Shard
 
 
 @dataclass(frozen=True, slots=True)
@@ -52,29 +59,59 @@ class CensusCount:
         return sum(self.certificate.labelled_counted.values())
 
 
-def count_census(n: int) -> CensusCount:
-    """Count the census of exactly ``n`` capacitors both ways.
+def count_census(n: int, *, jobs: int | None = None, say: Callable[[Note], None] = silent) -> CensusCount:
+    """List and score the cells of exactly ``n`` capacitors, keep none of them, and count both ways.
+
+    Parameters
+    ----------
+    n
+        Number of flying capacitors, 1 to `COUNT_REACH`.
+    jobs
+        Processes for six capacitors; fewer take one.
+    say
+        Is told how far it is.
 
     Raises
     ------
     CapmusterError
-        When ``n`` is beyond the reach of the census.
+        When ``n`` is beyond the reach of the count.
     """
-    certificate = certify(n)
-    table = census(n)
-    unity, degenerate = table.unity, table.degenerate
+    check_reach(n, COUNT_REACH)
+    tally, clean = Tally.empty(n), 0
+    text = f"listing, scoring and counting all cells of {n} flying capacitors"
+    if n <= CENSUS_REACH:
+        jobs, say = 1, silent  # a second or less
+    for _, (part, clean_part) in run_shards(n, _count_shard, text, jobs=jobs, say=say):
+        tally.merge(part)
+        clean += clean_part
+    held, degenerate = tally.per_triple(tally.held), tally.per_triple(tally.degenerate)
+    three_ports = {
+        triple: (held.get(triple, 0), degenerate.get(triple, 0))
+        for triple in {*held, *degenerate}
+        if triple[0]
+    }
     return CensusCount(
         n=n,
-        cells=int((~unity).sum()),
-        degenerate=int((~unity & degenerate).sum()),
-        clean=int(score(table.take(~unity & ~degenerate)).clean.sum()),
-        unity=int((unity & ~degenerate).sum()),
-        certificate=certificate,
+        cells=sum(map(sum, three_ports.values())),
+        degenerate=sum(lost for _, lost in three_ports.values()),
+        clean=clean,
+        unity=sum(count for triple, count in held.items() if not triple[0]),
+        certificate=certificate_of(tally),
     )
 
 
-def census_counts(n: int) -> pd.DataFrame:
-    """Count the census of exactly ``n`` capacitors, per triple.
+def _count_shard(shard: Shard) -> tuple[Tally, int]:
+    """Tally a shard's cells; also the clean ones with three port charges."""
+    tally = Tally.empty(shard.table.n)
+    clean = 0
+    for cells in score_cells(shard.table, shard.first, tally):
+        unity = (cells.charge_b == 0) | (cells.charge_c == 0) | (cells.charge_b == -cells.charge_c)
+        clean += int((cells.clean & ~unity).sum())
+    return tally, clean
+
+
+def census_counts(n: int, *, jobs: int | None = None) -> pd.DataFrame:
+    """Count the cells of exactly ``n`` capacitors both ways, per triple.
 
     Returns
     -------
@@ -85,11 +122,11 @@ def census_counts(n: int) -> pd.DataFrame:
     Raises
     ------
     CapmusterError
-        When ``n`` is beyond the reach of the census.
+        When ``n`` is beyond the reach of the count.
     """
     import pandas as pd  # noqa: PLC0415 -- slow to import
 
-    certificate = certify(n)
+    certificate = count_census(n, jobs=jobs).certificate
     triples = sorted({*certificate.labelled_listed, *certificate.labelled_counted})
     return pd.DataFrame(
         {

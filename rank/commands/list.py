@@ -26,6 +26,29 @@ _SHOWN = 25
 )
 @click.option("--switches", type=int, metavar="S", help="Most switches.")
 @click.option(
+    "--blocking-voltage", type=float, metavar="V", help="Largest blocking voltage, per volt of input."
+)
+@click.option("--capacitor-utilisation", type=float, metavar="U", help="Least capacitor utilisation, 0 to 1.")
+@click.option("--switch-utilisation", type=float, metavar="U", help="Least switch utilisation, 0 to 1.")
+@click.option(
+    "--output-evenness",
+    type=float,
+    metavar="E",
+    help="Least evenness of the output's feeding: 1 when both phases bring alike, 0 for one phase only.",
+)
+@click.option(
+    "--plate-on-ports", is_flag=True, help="Only where every capacitor has a plate on a port in both phases."
+)
+@click.option(
+    "--family", "families", multiple=True, metavar="NAME", help="Only members of a family; may be repeated."
+)
+@click.option(
+    "--frontier",
+    "frontier_only",
+    is_flag=True,
+    help="Only what no other beats in capacitors, switches, both utilisations and blocking voltage.",
+)
+@click.option(
     "--all",
     "include_unclean",
     is_flag=True,
@@ -46,7 +69,20 @@ _SHOWN = 25
     help="How rows are written.",
 )
 def command(
-    *, ratio: str, capacitors: int, switches: int | None, include_unclean: bool, limit: int | None, form: str
+    *,
+    ratio: str,
+    capacitors: int,
+    switches: int | None,
+    blocking_voltage: float | None,
+    capacitor_utilisation: float | None,
+    switch_utilisation: float | None,
+    output_evenness: float | None,
+    plate_on_ports: bool,
+    families: tuple[str, ...],
+    frontier_only: bool,
+    include_unclean: bool,
+    limit: int | None,
+    form: str,
 ) -> None:
     """List every converter of one ratio, best first.
 
@@ -56,15 +92,28 @@ def command(
     """
     from capmuster.rank.filters import Filters  # noqa: PLC0415 -- nothing heavy before it is needed
     from capmuster.rank.listing import find_converters  # noqa: PLC0415
+    from capmuster.rank.progress import told  # noqa: PLC0415
     from capmuster.rank.quantity import parse_ratio  # noqa: PLC0415
 
-    listing = find_converters(
-        parse_ratio(ratio),
-        capacitors,
-        filters=Filters(switches=switches),
-        include_unclean=include_unclean,
-        limit=_SHOWN if limit is None and form == "table" else limit,
+    filters = Filters(
+        switches=switches,
+        blocking_voltage=blocking_voltage,
+        capacitor_utilisation=capacitor_utilisation,
+        switch_utilisation=switch_utilisation,
+        output_evenness=output_evenness,
+        plate_on_ports=plate_on_ports,
+        families=families,
     )
+    with told() as say:
+        listing = find_converters(
+            parse_ratio(ratio),
+            capacitors,
+            filters=filters,
+            include_unclean=include_unclean,
+            frontier_only=frontier_only,
+            limit=_SHOWN if limit is None and form == "table" else limit,
+            say=say,
+        )
     if form == "json":
         _write_json(listing)
     elif form == "csv":
@@ -147,10 +196,11 @@ def _write_table(listing: Listing) -> None:
         "switch util.",
         "max V cap.",
         "max V switch",
+        "even",
         "families",
         "wiring",
     ]
-    flush = [False, True, True, True, True, True, True, False, False]
+    flush = [False, True, True, True, True, True, True, True, False, False]
     if listing.converters:
         click.echo(text_table(header, [_cells(row) for row in listing.converters], flush))
         click.echo()
@@ -166,6 +216,7 @@ def _cells(row: Listed) -> list[str]:
         f"{row.switch_utilisation:.4f}",
         f"{row.highest_capacitor_voltage:.3f}",
         f"{row.highest_blocking_voltage:.3f}",
+        f"{row.output_evenness:.2f}",
         ", ".join(row.families) or "-",
         row.wiring,
     ]
@@ -176,7 +227,8 @@ def _summary(listing: Listing) -> str:
     first = (
         f"Ratio {listing.ratio}, up to {_counted(listing.max_capacitors, 'flying capacitor')}: "
         f"{_counted(listing.count, 'converter')}, "
-        f"{unclean} more with an idle or an equipotential switch (--all); {len(listing.converters)} shown."
+        f"{unclean} more with an idle or an equipotential switch (--all); "
+        f"{len(listing.converters)} of {listing.total} shown."
     )
     lines = [first]
     if listing.complete_up_to < listing.max_capacitors:
@@ -185,7 +237,10 @@ def _summary(listing: Listing) -> str:
             "above that, family members only."
         )
     if listing.converters:
-        lines.append("C: flying capacitors, S: switches; voltages per volt of input.")
+        lines.append(
+            "C: flying capacitors, S: switches; voltages per volt of input; "
+            "even: how alike both phases feed the output."
+        )
     return "\n".join(lines)
 
 
