@@ -71,10 +71,10 @@ class Brief:
     name
         The name it was loaded by: the file's name without suffix.
     objective
-        What is ranked by. "conduction-area": the least area whose conduction meets the droop at `frequency`. With
-        all losses counted: "least-loss" at the nominal input, or over `profile`, within the area budgets;
-        "least-area" that keeps the efficiency floor at every input; "power-density", the greatest one that keeps
-        the floor at the nominal input, with the load free from `current_least` to `current`.
+        What is ranked by. "conduction-area": the least area whose conduction meets the droop at `frequency`.
+        With all losses counted: "least-loss" at the nominal input, or over `profile`, within the area
+        budgets; "least-area" that keeps the efficiency floor at every input; "power-density", the greatest
+        one that keeps the floor at the nominal input, with the load free from `current_least` to `current`.
     frequency_minimum
         Lowest switching frequency [Hz], which makes `frequency` the highest one; None if it is fixed.
     duty
@@ -82,7 +82,8 @@ class Brief:
     regulation
         What holds the output in regulated use: the frequency, or the on-resistances at a fixed frequency.
     output_most
-        In fixed-ratio use the highest output that is acceptable, at the highest input without load [V], or None.
+        In fixed-ratio use the highest output that is acceptable, at the highest input without load [V], or
+        None.
     current_least
         Lowest load current, for "power-density" [A].
     profile

@@ -8,6 +8,10 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from capmuster.rank.areas import fast_coefficient, least_area, slow_coefficient
+from capmuster.rank.classprices import ClassCosts, cheapest, series_counts
+from capmuster.rank.devicechoice import choose_and_size
+from capmuster.rank.gatedrive import floating_drives, rail_driven
+from capmuster.rank.operation import Candidates
 from capmuster.rank.switchtable import score, switch_table
 from capmuster.rank.worstcase import ratings
 
@@ -16,6 +20,7 @@ if TYPE_CHECKING:
 
     from capmuster.enumerate.converters import ConverterTable
     from capmuster.rank.brief import Brief
+    from capmuster.rank.objectives import Sized
     from capmuster.rank.switchtable import SwitchTable
     from capmuster.rank.technology import Choice
     from capmuster.rank.worstcase import Ratings
@@ -53,6 +58,8 @@ class Elements:
 class Evaluation:
     """N candidates of a brief; every array has shape (N,).
 
+    Where the brief counts losses, areas and impedance are those of its objective, and `sized` says more.
+
     Attributes
     ----------
     slow, fast
@@ -76,6 +83,15 @@ class Evaluation:
         Least phase share of the output charge over one half [1].
     clean
         Whether no switch is idle or equipotential.
+    floating_drives
+        Number of switches whose gates no rail can drive.
+    merit
+        What candidates are ranked by, the less the better: the area [mm2], or as `Sized.merit`.
+    worst_efficiency
+        Least efficiency over the input range [1]; conduction only, with the whole droop budget used, where
+        the brief counts no losses.
+    sized
+        Sizes and losses where the brief counts losses, or None.
     """
 
     slow: NDArray[np.float64]
@@ -92,6 +108,10 @@ class Evaluation:
     highest_blocking_voltage: NDArray[np.float64]
     output_evenness: NDArray[np.float64]
     clean: NDArray[np.bool_]
+    floating_drives: NDArray[np.int64]
+    merit: NDArray[np.float64]
+    worst_efficiency: NDArray[np.float64]
+    sized: Sized | None = None
 
     @property
     def silicon_area(self) -> NDArray[np.float64]:
@@ -111,6 +131,8 @@ def choose_elements(table: ConverterTable, switches: SwitchTable, brief: Brief) 
     output = np.abs(table.port_charges[:, _O, None]).astype(np.float64)
     capacitor_choice = technology.capacitor_choice(stands.capacitors)
     switch_choice = technology.switch_choice(stands.switches)
+    if brief.drive == "rails":
+        switch_choice = _driven(table, switches, brief, stands.switches)
     weights = switches.charges / output * np.sqrt(switch_choice.cost)
     idle = (switches.phase > 0) & (switches.charges == 0)
     idle_area = np.zeros(len(table))
@@ -128,6 +150,17 @@ def choose_elements(table: ConverterTable, switches: SwitchTable, brief: Brief) 
     )
 
 
+def _driven(
+    table: ConverterTable, switches: SwitchTable, brief: Brief, voltage: NDArray[np.float64]
+) -> Choice:
+    """Choose by least cost among the classes that the rails can drive, where there is one."""
+    able, technology = rail_driven(table, switches, brief), brief.technology
+    able |= ~able.any(axis=-1, keepdims=True)
+    columns = technology.switch_columns()
+    series = series_counts(voltage, columns.limit)
+    return cheapest(ClassCosts(np.where(able, series**2 * columns.resistance, np.inf), series))
+
+
 def _merged(where: NDArray[np.bool_], chosen: Choice, other: Choice) -> Choice:
     return type(other)(
         index=np.where(where, chosen.index, other.index),
@@ -137,22 +170,31 @@ def _merged(where: NDArray[np.bool_], chosen: Choice, other: Choice) -> Choice:
 
 
 def evaluate(table: ConverterTable, brief: Brief) -> Evaluation:
-    """Size every converter of a table for the droop budget of a brief, in one batch."""
+    """Size every converter of a table for a brief, in one batch."""
     switches = switch_table(table)
     scores = score(table)
     elements = choose_elements(table, switches, brief)
-    slow = slow_coefficient(elements.capacitor_weights, brief.frequency)
-    fast = fast_coefficient(elements.switch_weights)
-    limit = brief.r_max(table.ratios)
-    silicon = None if brief.silicon_area is None else brief.silicon_area - elements.idle_area
-    areas = least_area(slow, fast, limit, brief.capacitor_area, silicon)
+    sized = None
+    if brief.counts_losses:
+        chosen, sized = choose_and_size(Candidates(table, switches, elements, brief))
+        elements = chosen.elements
+        capacitor_area, switching_area = sized.capacitor_area, sized.switching_area
+        impedance, merit, worst = sized.nominal.impedance, sized.merit, sized.worst_efficiency
+        slow, fast = sized.minimum.slow * capacitor_area, sized.minimum.fast * switching_area
+    else:
+        slow = slow_coefficient(elements.capacitor_weights, brief.frequency)
+        fast = fast_coefficient(elements.switch_weights)
+        silicon = None if brief.silicon_area is None else brief.silicon_area - elements.idle_area
+        areas = least_area(slow, fast, brief.r_max(table.ratios), brief.capacitor_area, silicon)
+        capacitor_area, switching_area, impedance = areas.capacitor_area, areas.silicon_area, areas.impedance
+        merit, worst = areas.area + elements.idle_area, worst_efficiency(brief, table.ratios)
     return Evaluation(
         slow=slow,
         fast=fast,
-        capacitor_area=areas.capacitor_area,
-        switching_area=areas.silicon_area,
+        capacitor_area=capacitor_area,
+        switching_area=switching_area,
         idle_area=elements.idle_area,
-        impedance=areas.impedance,
+        impedance=impedance,
         ratio=table.ratios,
         switches=scores.switches,
         capacitor_utilisation=scores.capacitor_utilisation,
@@ -161,6 +203,12 @@ def evaluate(table: ConverterTable, brief: Brief) -> Evaluation:
         highest_blocking_voltage=elements.ratings.switches.max(axis=1),
         output_evenness=output_evenness(table),
         clean=scores.clean,
+        floating_drives=floating_drives(
+            rail_driven(table, switches, brief), elements.switch_choice, switches
+        ),
+        merit=merit,
+        worst_efficiency=worst,
+        sized=sized,
     )
 
 
@@ -184,6 +232,13 @@ def efficiency(
     ideal = np.abs(ratio) * volts
     output = ideal - brief.current * impedance if brief.use == "fixed-ratio" else abs(brief.required)
     return np.asarray(output / ideal)
+
+
+def worst_efficiency(brief: Brief, ratio: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Conduction-only efficiency at the worst input with the whole droop budget used, shape (N,)."""
+    limit = brief.r_max(ratio)
+    ends = [efficiency(brief, ratio, limit, volts) for volts in (brief.input_minimum, brief.input_maximum)]
+    return np.asarray(np.minimum(*ends))
 
 
 def ceiling(brief: Brief, ratio: NDArray[np.float64], volts: float) -> NDArray[np.float64]:

@@ -17,9 +17,9 @@ controller         power                     W           technology
 wiring             series resistance         ohm         technology
 =================  ========================  ==========  =========================================
 
-``dU`` is the step of a plate's potential between the phases. A capacitor's voltage is constant, so both plates
-make the same step, and stacked devices too: which plate is the parasitic one changes the no-load ratio, never
-this loss.
+``dU`` is the step of a plate's potential between the phases. A capacitor's voltage is constant, so both
+plates make the same step, and stacked devices too: which plate is the parasitic one changes the no-load
+ratio, and never this loss.
 """
 
 from __future__ import annotations

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections import Counter
-from dataclasses import dataclass, fields
+from dataclasses import dataclass
 from fractions import Fraction
 from typing import TYPE_CHECKING
 
@@ -12,8 +12,10 @@ import numpy as np
 from capmuster.enumerate.census import CENSUS_REACH
 from capmuster.enumerate.converters import ConverterTable, converters, table_of
 from capmuster.enumerate.families import members
-from capmuster.rank.evaluation import Evaluation, efficiency, evaluate
+from capmuster.rank.evaluation import Evaluation, evaluate, worst_efficiency
 from capmuster.rank.frontier import frontier
+from capmuster.rank.structs import joined, rows_of
+from capmuster.rank.switchtable import score
 
 if TYPE_CHECKING:
     from collections.abc import Callable, Iterator, Sequence
@@ -22,6 +24,7 @@ if TYPE_CHECKING:
 
     from capmuster.enumerate.wiring import Converter
     from capmuster.rank.brief import Brief
+    from capmuster.rank.switchtable import Scores
 
 _I, _O = 1, 2
 _UNCLEAN = "a switch is idle or blocks no voltage"
@@ -30,6 +33,9 @@ _NO_AREA = "no area within the budgets meets the droop"
 _TOO_LARGE = "the area is above the budget"
 _INEFFICIENT = "below the efficiency floor"
 _NOT_HELD = "the ratio cannot hold the output"
+_NOT_BORNE = "the output is above the highest that is acceptable"
+_NOT_DRIVEN = "no rail can drive a gate"
+_NO_SIZES = "no sizes within the limits meet the brief"
 
 
 @dataclass(frozen=True, slots=True)
@@ -129,19 +135,36 @@ def _judged(
             reasons[reason] = int(np.count_nonzero(~good))
         return good
 
+    table = table.take(keep(_where(table, brief.bears), _NOT_BORNE))
     table = table.take(keep(_where(table, lambda ratio: _efficient(brief, ratio)), _INEFFICIENT))
-    figures = evaluate(table, brief)
+    scores = score(table)
+    table, scores = _both(table, scores, keep(scores.clean | forgive_unclean, _UNCLEAN))
     most_switches, most_area = brief.most_switches or np.inf, brief.area or np.inf
+    table = table.take(keep(np.asarray(scores.switches <= most_switches), _TOO_MANY_SWITCHES))
+    figures = evaluate(table, brief)
     checks: tuple[tuple[str, Callable[[Evaluation], NDArray[np.bool_]]], ...] = (
-        (_UNCLEAN, lambda f: f.clean | forgive_unclean),
-        (_TOO_MANY_SWITCHES, lambda f: np.asarray(f.switches <= most_switches)),
-        (_NO_AREA, lambda f: np.isfinite(f.area)),
-        (_TOO_LARGE, lambda f: np.asarray(f.area <= most_area)),
+        (_NO_SIZES if brief.counts_losses else _NO_AREA, lambda f: np.isfinite(f.merit)),
+        (_TOO_LARGE, lambda f: np.asarray(f.area <= most_area * (1 + _ROUNDING))),
+        (_INEFFICIENT, lambda f: np.asarray(f.worst_efficiency >= _floor(brief))),
+        (_NOT_DRIVEN, lambda f: np.asarray((f.floating_drives == 0) | (brief.drive == "any"))),
     )
     for reason, passes in checks:
-        good = keep(passes(figures), reason)
-        table, figures = table.take(good), _taken(figures, good)
+        good = passes(figures)
+        if not good.all():
+            reasons[reason] += int(np.count_nonzero(~good))
+        table, figures = table.take(good), rows_of(figures, good)
     return table, figures, reasons
+
+
+def _both(table: ConverterTable, scores: Scores, rows: NDArray[np.bool_]) -> tuple[ConverterTable, Scores]:
+    return table.take(rows), rows_of(scores, rows)
+
+
+def _floor(brief: Brief) -> float:
+    """Efficiency that the worst input must reach, or minus infinity."""
+    if brief.efficiency_floor is None or brief.objective in ("conduction-area", "power-density"):
+        return -np.inf
+    return brief.efficiency_floor * (1 - _ROUNDING)
 
 
 def _sources(brief: Brief, reach: int, include: Sequence[Converter]) -> Iterator[tuple[ConverterTable, bool]]:
@@ -175,27 +198,12 @@ def _where(table: ConverterTable, condition: Callable[[Fraction], bool]) -> NDAr
 
 
 def _efficient(brief: Brief, ratio: Fraction) -> bool:
-    if brief.efficiency_floor is None:
+    """Whether the ratio alone leaves the floor within reach."""
+    if brief.efficiency_floor is None or (brief.counts_losses and brief.use == "fixed-ratio"):
         return True
+    if brief.objective == "power-density":
+        return abs(brief.required) > brief.efficiency_floor * float(abs(ratio)) * brief.input_nominal
     return bool(worst_efficiency(brief, np.array([float(ratio)]))[0] >= brief.efficiency_floor * (1 - 1e-12))
-
-
-def worst_efficiency(brief: Brief, ratio: NDArray[np.float64]) -> NDArray[np.float64]:
-    """Conduction-only efficiency at the worst input with the whole droop budget used, shape (N,)."""
-    limit = brief.r_max(ratio)
-    ends = [efficiency(brief, ratio, limit, volts) for volts in (brief.input_minimum, brief.input_maximum)]
-    return np.asarray(np.minimum(*ends))
-
-
-def _taken(evaluation: Evaluation, rows: NDArray[np.generic]) -> Evaluation:
-    return Evaluation(*(getattr(evaluation, field.name)[rows] for field in fields(Evaluation)))
-
-
-def _joined(fits: Sequence[tuple[ConverterTable, Evaluation]], brief: Brief) -> Evaluation:
-    evaluations = [figures for _, figures in fits] or [evaluate(converters(1).take(slice(0, 0)), brief)]
-    return Evaluation(
-        *(np.concatenate([getattr(one, field.name) for one in evaluations]) for field in fields(Evaluation))
-    )
 
 
 def _ordered(
@@ -207,20 +215,20 @@ def _ordered(
     left_out: Counter[str],
     refused: dict[str, str],
 ) -> Pool:
-    figures = _joined(fits, brief)
+    figures = joined([one for _, one in fits] or [evaluate(converters(1).take(slice(0, 0)), brief)])
     tables = [table for table, _ in fits]
     sizes = [len(table) for table in tables]
     group = np.repeat(np.arange(len(tables)), sizes)
     row = np.concatenate([np.zeros(0, dtype=np.intp), *(np.arange(size) for size in sizes)])
     ids = np.array([one for table in tables for one in table.ids()], dtype=np.str_)
     capacitors = np.repeat(np.array([table.n for table in tables], dtype=np.int64), sizes)
-    order = np.lexsort((ids, capacitors, figures.switches, _tie_classes(figures.area)))
-    figures = _taken(figures, order)
+    order = np.lexsort((ids, capacitors, figures.switches, _tie_classes(figures.merit)))
+    figures = rows_of(figures, order)
     capacitors = capacitors[order]
     costs = np.stack(
         [
             figures.area,
-            -worst_efficiency(brief, figures.ratio),
+            -figures.worst_efficiency,
             capacitors.astype(np.float64),
             figures.switches.astype(np.float64),
             figures.highest_blocking_voltage,
@@ -243,16 +251,16 @@ def _ordered(
 
 
 _TIE = 1e-9
+_ROUNDING = 1e-9  # relative: a limit missed by no more than this is met
 
 
-def _tie_classes(area: NDArray[np.float64]) -> NDArray[np.int64]:
-    """Give areas numbers in ascending order; areas within 1e-9 of the next lower one share a number."""
-    order = np.argsort(area, kind="stable")
-    sorted_area = area[order]
-    classes = np.zeros(len(area), dtype=np.int64)
-    classes[order] = np.concatenate([[0], np.cumsum(np.diff(sorted_area) > _TIE * sorted_area[:-1])])[
-        : len(area)
-    ]
+def _tie_classes(merit: NDArray[np.float64]) -> NDArray[np.int64]:
+    """Give merits numbers in ascending order; merits within 1e-9 of the next lower one share a number."""
+    order = np.argsort(merit, kind="stable")
+    ascending = merit[order]
+    steps = np.diff(ascending) > _TIE * np.abs(ascending[:-1])
+    classes = np.zeros(len(merit), dtype=np.int64)
+    classes[order] = np.concatenate([[0], np.cumsum(steps)])[: len(merit)]
     return classes
 
 
