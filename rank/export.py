@@ -1,4 +1,4 @@
-"""A shortlist as a file: CSV, XLSX, Markdown, JSON or Parquet, by suffix.
+"""A shortlist as a file: CSV, HTML, XLSX, Markdown, JSON or Parquet, by suffix.
 
 Every file carries the program's version and the fingerprints of technology and brief, and holds the same
 bytes for the same input. All files of a call are rendered before the first one appears.
@@ -21,6 +21,7 @@ if TYPE_CHECKING:
 
 _RENDERERS = {
     ".csv": "capmuster.rank.export_text:to_csv",
+    ".html": "capmuster.rank.page.shortlisted:to_page",
     ".json": "capmuster.rank.export_text:to_json",
     ".md": "capmuster.rank.export_text:to_markdown",
     ".parquet": "capmuster.rank.export_parquet:to_parquet",

@@ -7,7 +7,7 @@ import click
 
 @click.command(
     name="export",
-    epilog="\b\nExample:\n  capmuster export greenhouse-node --to shortlist.xlsx --to shortlist.csv",
+    epilog="\b\nExample:\n  capmuster export greenhouse-node --to shortlist.html --to shortlist.xlsx",
 )
 @click.argument("brief")
 @click.option(
@@ -16,7 +16,8 @@ import click
     multiple=True,
     required=True,
     metavar="FILE",
-    help="Where to write, as the suffix says: .csv, .json, .md, .parquet, .xlsx. May be given several times.",
+    help="Where to write, as the suffix says: .csv, .html, .json, .md, .parquet, .xlsx. "
+    "May be given several times.",
 )
 @click.option("--top", type=int, default=10, show_default=True, metavar="K", help="Hold the best K.")
 @click.option(
