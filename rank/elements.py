@@ -9,7 +9,10 @@ import numpy as np
 
 from capmuster.enumerate.converters import table_of
 from capmuster.rank.areas import element_areas
+from capmuster.rank.devicechoice import choose_and_size
 from capmuster.rank.evaluation import choose_elements
+from capmuster.rank.gatedrive import gate_drives
+from capmuster.rank.operation import Candidates
 from capmuster.rank.switching import switch_network
 from capmuster.rank.switchtable import SwitchTable
 
@@ -48,6 +51,15 @@ class Element:
         Voltage that it must stand [V].
     rating
         What it stands, derated [V].
+    polarity
+        "nmos" or "pmos"; empty for a capacitor.
+    source
+        Potential of a switch's source at the nominal input while it conducts and while it blocks [V], ideal;
+        None for a capacitor.
+    gate
+        Potential that its gate needs while it conducts and while it blocks [V]; None for a capacitor.
+    supply
+        "rails" where ground, input and output span these potentials at the lowest input, or "floating".
     """
 
     kind: Literal["capacitor", "switch"]
@@ -61,6 +73,10 @@ class Element:
     multiplier: float
     voltage: float
     rating: float
+    polarity: str = ""
+    source: tuple[float, float] | None = None
+    gate: tuple[float, float] | None = None
+    supply: str = ""
 
     @property
     def stress(self) -> float:
@@ -80,18 +96,27 @@ def elements_of(
     brief
         Its use and technology.
     capacitor_area
-        Area of all capacitors [mm2].
+        Area of all capacitors [mm2], where the brief counts no losses; else the objective decides.
     switching_area
-        Area of all switches that carry charge [mm2].
+        Area of all switches that carry charge [mm2], likewise.
     """
     table = table_of([converter])
     network = switch_network(converter)
-    chosen = choose_elements(table, network_table(table, network), brief)
+    switches = network_table(table, network)
+    chosen = choose_elements(table, switches, brief)
     technology = brief.technology
-    capacitor_areas = element_areas(chosen.capacitor_weights, np.array([capacitor_area]))[0]
-    switch_areas = element_areas(
-        chosen.switch_weights, np.array([switching_area]), smallest=chosen.switch_choice.cost
-    )[0]
+    if brief.counts_losses:
+        candidate, sized = choose_and_size(Candidates(table, switches, chosen, brief))
+        chosen = candidate.elements
+        capacitor_areas = sized.design.capacitors[0]
+        working = switches.charges[0] > 0
+        switch_areas = np.where(working, sized.design.switches[0], chosen.switch_choice.cost[0])
+    else:
+        capacitor_areas = element_areas(chosen.capacitor_weights, np.array([capacitor_area]))[0]
+        switch_areas = element_areas(
+            chosen.switch_weights, np.array([switching_area]), smallest=chosen.switch_choice.cost
+        )[0]
+    drives = gate_drives(table, switches, brief, chosen.switch_choice)
     found = []
     plate_of = {plate: cluster.name for cluster in network.clusters for plate in cluster.plates}
     for i, area in enumerate(capacitor_areas.tolist()):
@@ -128,6 +153,10 @@ def elements_of(
                 multiplier=float(switch.multiplier),
                 voltage=float(chosen.ratings.switches[0, j]),
                 rating=series * transistor.rating * technology.switch_derating,
+                polarity=transistor.polarity,
+                source=drives[j].source,
+                gate=drives[j].gate,
+                supply=drives[j].supply,
             )
         )
     return tuple(found)

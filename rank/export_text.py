@@ -7,10 +7,10 @@ from dataclasses import asdict
 from typing import TYPE_CHECKING
 
 from capmuster.rank.quantity import format_quantity
-from capmuster.rank.shortlist import COLUMNS
 from capmuster.rank.summary import assumptions, verdict
 
 if TYPE_CHECKING:
+    from capmuster.rank.elements import Element
     from capmuster.rank.shortlist import Column, Shortlist
 
 _UNITS = {"mm2": "mm²", "S/mm2": "S/mm²", "ohm": "Ω", "1": "%"}
@@ -42,7 +42,7 @@ def to_json(shortlist: Shortlist) -> bytes:
             "gain_over_family": gain,
             "included": [asdict(one) for one in shortlist.included],
         },
-        "units": {column.name: column.unit for column in COLUMNS},
+        "units": {column.name: column.unit for column in shortlist.columns},
         "candidates": rows,
     }
     return (json.dumps(content, ensure_ascii=False, indent=1) + "\n").encode()
@@ -55,7 +55,7 @@ def to_markdown(shortlist: Shortlist) -> bytes:
     lines += [f"| {name} | {_escaped(value)} |" for name, value in assumptions(shortlist.brief)]
     lines += ["", *(f"- {_escaped(line)}" for line in verdict(shortlist)), ""]
     lines += [f"> **Caution.** {_escaped(text)}\n" for text in shortlist.cautions]
-    shown = [c for c in COLUMNS if c.name not in _NOT_IN_MARKDOWN]
+    shown = [c for c in shortlist.columns if c.name not in _NOT_IN_MARKDOWN]
     lines += [
         "| " + " | ".join(heading(c) for c in shown) + " |",
         "|" + "|".join("---" if c.name in _TEXTUAL else "---:" for c in shown) + "|",
@@ -65,19 +65,25 @@ def to_markdown(shortlist: Shortlist) -> bytes:
     for k in range(len(shortlist)):
         lines += ["", f"## {k + 1}. {shortlist.pool.ids[k]}: `{shortlist.pool.code(k)}`", ""]
         lines += [
-            "| element | between | closed in | class | in series | area [mm²] | value | multiplier "
-            "| must stand [V] | stress |",
-            "|---|---|---|---|---:|---:|---:|---:|---:|---:|",
+            (
+                "| element | between | closed in | class | in series | area [mm²] | value | multiplier "
+                "| must stand [V] | stress | source on / off [V] | gate supply |"
+            ),
+            "|---|---|---|---|---:|---:|---:|---:|---:|---:|---|---|",
         ]
         for e in shortlist.elements(k):
             value = format_quantity(e.value, "F" if e.kind == "capacitor" else "ohm")
             lines.append(
                 f"| {e.name} | {e.nodes[0]}, {e.nodes[1]} | {f'phase {e.phase}' if e.phase else ''} "
                 f"| {_escaped(e.device)} | {e.series} | {e.area:.4g} | {value} | {e.multiplier:.4g} "
-                f"| {e.voltage:.4g} | {e.stress:.1%} |"
+                f"| {e.voltage:.4g} | {e.stress:.1%} | {_source(e)} | {e.supply} |"
             )
     lines += ["", "; ".join(f"{name} {value}" for name, value in shortlist.provenance.items()), ""]
     return "\n".join(lines).encode()
+
+
+def _source(element: Element) -> str:
+    return "" if element.source is None else " / ".join(f"{volts:.3g}" for volts in element.source)
 
 
 _TEXTUAL = {"id", "ratio", "families", "wiring", "pareto"}

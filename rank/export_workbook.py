@@ -7,7 +7,6 @@ import io
 from typing import TYPE_CHECKING
 
 from capmuster.rank.export_text import heading
-from capmuster.rank.shortlist import COLUMNS
 from capmuster.rank.summary import assumptions, verdict
 
 if TYPE_CHECKING:
@@ -59,7 +58,7 @@ def _shortlist_sheet(book: Workbook, head: Format, shortlist: Shortlist) -> None
         "whole": book.add_format({"num_format": "0"}),
     }
     rows = shortlist.frame.to_dict("records")
-    for k, column in enumerate(COLUMNS):
+    for k, column in enumerate(shortlist.columns):
         sheet.write_string(0, k, heading(column), head)
         sheet.set_column(k, k, _WIDTHS.get(column.name, 12))
         for r, row in enumerate(rows, start=1):
@@ -80,7 +79,7 @@ def _shortlist_sheet(book: Workbook, head: Format, shortlist: Shortlist) -> None
             sheet.conditional_format(1, k, len(rows), k, {**bars, "bar_solid": True, "bar_color": "#9DC3E6"})
     sheet.freeze_panes(1, 2)
     if rows:
-        sheet.autofilter(0, 0, len(rows), len(COLUMNS) - 1)
+        sheet.autofilter(0, 0, len(rows), len(shortlist.columns) - 1)
     _for_print(sheet)
 
 
@@ -117,6 +116,11 @@ def _element_sheet(book: Workbook, head: Format, shortlist: Shortlist) -> None:
             ):
                 sheet.write_number(r, k, value, form)
             sheet.write_number(r, 14, e.stress, percent)
+            if e.source is not None and e.gate is not None:
+                sheet.write_string(r, 15, e.polarity)
+                for k, value in enumerate((*e.source, *e.gate), start=16):
+                    sheet.write_number(r, k, value, figure)
+                sheet.write_string(r, 20, e.supply)
     sheet.freeze_panes(1, 3)
     if r:
         sheet.autofilter(0, 0, r, len(_ELEMENT_HEADINGS) - 1)
@@ -132,7 +136,7 @@ def _assumption_sheet(book: Workbook, head: Format, shortlist: Shortlist) -> Non
         *assumptions(shortlist.brief),
         *(("search", line) for line in verdict(shortlist)),
         *(("caution", text) for text in shortlist.cautions),
-        *((f"column {column.heading}", column.meaning) for column in COLUMNS),
+        *((f"column {column.heading}", column.meaning) for column in shortlist.columns),
         *shortlist.provenance.items(),
     ]
     sheet.write_string(0, 0, "what", head)

@@ -122,3 +122,51 @@ def floating_drives(able: NDArray[np.bool_], choice: Choice, switches: SwitchTab
     """Count the switches that the rails cannot drive, as they were chosen; shape (N,)."""
     driven = np.take_along_axis(able, choice.index[..., None], axis=-1)[..., 0]
     return np.asarray(((switches.phase > 0) & ~driven).sum(axis=1))
+
+
+@dataclass(frozen=True, slots=True)
+class GateDrive:
+    """The drive of one switch at the nominal input.
+
+    Attributes
+    ----------
+    source
+        Potential of the source while the switch conducts and while it blocks [V].
+    gate
+        Potential that the gate needs then [V].
+    supply
+        "rails" or "floating".
+    """
+
+    source: tuple[float, float]
+    gate: tuple[float, float]
+    supply: str
+
+
+def gate_drives(
+    table: ConverterTable, switches: SwitchTable, brief: Brief, choice: Choice
+) -> tuple[GateDrive, ...]:
+    """Work out the drive of every switch of the one converter of a table.
+
+    Parameters
+    ----------
+    table, switches
+        The converter and its switches.
+    brief
+        Its use and technology.
+    choice
+        Class of each switch.
+    """
+    at, volts = gates(table, switches), brief.input_nominal
+    classes = [brief.technology.switches[k] for k in choice.index[0].tolist()]
+    nmos = np.array([[one.polarity == "nmos" for one in classes]])
+    conducting, blocking = levels(at, nmos, np.array([[one.drive for one in classes]]), volts)
+    able = rail_driven(table, switches, brief)[0]
+    return tuple(
+        GateDrive(
+            source=(float(at.closed[0, j] * volts), float(blocking[0, j])),
+            gate=(float(conducting[0, j]), float(blocking[0, j])),
+            supply="rails" if able[j, k] else "floating",
+        )
+        for j, k in enumerate(choice.index[0, : int(switches.count[0])].tolist())
+    )

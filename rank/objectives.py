@@ -36,7 +36,8 @@ class Sized:
     least, greatest
         Proven bounds on the best merit that any sizes could have.
     proven
-        Whether these bounds meet to a relative 1e-9.
+        Whether these bounds meet to a relative 1e-9. Never where a held output switches at several inputs of
+        a profile, each at its own frequency: then `least` is NaN.
     design
         Areas of all elements, frequency, duty, full load.
     minimum, nominal, maximum
@@ -141,13 +142,17 @@ def _sized(candidates: Candidates, found: Sizing) -> Sized:
         # The droop of a held output is lost whatever the sizes: the sizing leaves it out.
         shift = wasted - found.value
         least, greatest, merit = least + shift, greatest + shift, wasted
+    proven = found.status == Status.OPTIMAL
+    if _weighted_by_frequency(brief):
+        # The weights of the points follow from the sizes: no bound over all sizes.
+        least, proven = np.full_like(least, np.nan), np.zeros_like(proven)
     out_of_budget = _budget(brief.area, idle) <= 0
     out_of_budget |= _budget(brief.silicon_area, idle) <= 0
     return Sized(
         merit=np.where(out_of_budget, np.nan, merit),
         least=least,
         greatest=greatest,
-        proven=found.status == Status.OPTIMAL,
+        proven=proven,
         design=design,
         minimum=at[0],
         nominal=at[1],
@@ -156,6 +161,14 @@ def _sized(candidates: Candidates, found: Sizing) -> Sized:
         mean_efficiency=useful / (useful + wasted),
         prices=found.prices,
     )
+
+
+def _weighted_by_frequency(brief: Brief) -> bool:
+    """Whether points of a profile differ in their losses per cycle and in their frequencies."""
+    if brief.use == "fixed-ratio" or brief.regulation == "conductance":
+        return False
+    inputs = {point.volts or brief.input_nominal for point in brief.profile if not point.asleep}
+    return len(inputs) > 1
 
 
 def _design(found: Sizing, brief: Brief) -> Design:

@@ -12,9 +12,12 @@ from capmuster.enumerate.errors import CapmusterError
 from capmuster.enumerate.families import family_names
 from capmuster.rank._version import __version__
 from capmuster.rank.cautions import cautions
+from capmuster.rank.columns import COLUMNS, Column, columns_of
 from capmuster.rank.elements import Element, elements_of
 from capmuster.rank.evaluation import ceiling, efficiency
+from capmuster.rank.lossvalues import loss_values
 from capmuster.rank.pool import Pool, gather
+from capmuster.rank.structs import rows_of
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
@@ -24,61 +27,7 @@ if TYPE_CHECKING:
     from capmuster.enumerate.wiring import Converter
     from capmuster.rank.brief import Brief
 
-
-@dataclass(frozen=True, slots=True)
-class Column:
-    """A column of the shortlist.
-
-    Attributes
-    ----------
-    name
-        Its name in tables for programs, unit included.
-    heading
-        Its heading for people.
-    unit
-        Its unit, or an empty text.
-    meaning
-        One line.
-    """
-
-    name: str
-    heading: str
-    unit: str
-    meaning: str
-
-
-COLUMNS = (
-    Column("place", "place", "", "place by area efficiency, 1 is best"),
-    Column("id", "id", "", "short id, derived from the wiring"),
-    Column("ratio", "ratio", "", "M = V_out / V_in at no load"),
-    Column("families", "families", "", "families that the converter belongs to"),
-    Column("flying_capacitors", "capacitors", "", "flying capacitors"),
-    Column("switches", "switches", "", "switches"),
-    Column("area_mm2", "area", "mm2", "least area that meets the droop budget at the brief's frequency"),
-    Column("capacitor_area_mm2", "capacitor area", "mm2", "share of the capacitors"),
-    Column("silicon_area_mm2", "silicon area", "mm2", "share of the switches"),
-    Column("conductance_per_area_S_per_mm2", "G / area", "S/mm2", "output conductance per area"),
-    Column("impedance_ohm", "R_out", "ohm", "output impedance at that area, blend of both limits"),
-    Column("slow_limit_ohm", "R_SSL", "ohm", "slow-switching limit at that area"),
-    Column("fast_limit_ohm", "R_FSL", "ohm", "fast-switching limit at that area"),
-    Column("droop_V", "droop", "V", "load current times R_out"),
-    Column("efficiency_minimum", "efficiency at V_in min", "1", "conduction only, at the lowest input"),
-    Column("efficiency_nominal", "efficiency at V_in nom", "1", "conduction only, at the nominal input"),
-    Column("efficiency_maximum", "efficiency at V_in max", "1", "conduction only, at the highest input"),
-    Column("ceiling_minimum", "ceiling at V_in min", "1", "V_required / (M V_in) at the lowest input"),
-    Column("ceiling_nominal", "ceiling at V_in nom", "1", "V_required / (M V_in) at the nominal input"),
-    Column("ceiling_maximum", "ceiling at V_in max", "1", "V_required / (M V_in) at the highest input"),
-    Column("capacitor_utilisation", "capacitor utilisation", "1", "E / sum |q v| over capacitors"),
-    Column("switch_utilisation", "switch utilisation", "1", "4 E / sum |q v| over switches"),
-    Column(
-        "output_evenness", "output evenness", "1", "1 when both phases feed the output alike, 0 when one does"
-    ),
-    Column("highest_capacitor_voltage_V", "highest capacitor voltage", "V", "worst case over the capacitors"),
-    Column("highest_blocking_voltage_V", "highest blocking voltage", "V", "worst case over the switches"),
-    Column("pareto", "Pareto", "", "no candidate beats it in area, efficiency, parts and blocking voltage"),
-    Column("wiring", "wiring", "", "wiring code"),
-)
-"""Columns of `Shortlist.frame`, in their order."""
+__all__ = ["COLUMNS", "Column", "Included", "Shortlist", "shortlist"]
 
 
 @dataclass(frozen=True, slots=True)
@@ -131,6 +80,11 @@ class Shortlist:
         """Dangers that the brief gives away, in words."""
         return cautions(self.brief)
 
+    @property
+    def columns(self) -> tuple[Column, ...]:
+        """Columns of the table, in their order."""
+        return columns_of(self.brief)
+
     @cached_property
     def best_family_place(self) -> int | None:
         """Place, counted from 1, of the best candidate that belongs to a family; None if none does."""
@@ -139,12 +93,16 @@ class Shortlist:
 
     @property
     def gain_over_family(self) -> float | None:
-        """Area of the best family member over that of the best candidate; None without a family member."""
+        """What is ranked by, of the best family member over the best candidate; None without a family member.
+
+        Area or loss, at least 1; or the best candidate's power density over the best family member's.
+        """
         place = self.best_family_place
         if place is None:
             return None
-        area = self.pool.evaluation.area
-        return float(area[place - 1] / area[0])
+        merit = self.pool.evaluation.merit
+        quotient = float(merit[place - 1] / merit[0])
+        return quotient if merit[0] > 0 else 1 / quotient
 
     @property
     def provenance(self) -> dict[str, str]:
@@ -157,7 +115,7 @@ class Shortlist:
 
     @cached_property
     def frame(self) -> pd.DataFrame:
-        """The table: one row per candidate, best first, with the columns `COLUMNS`."""
+        """The table: one row per candidate, best first, with the columns of `columns`."""
         import pandas as pd  # noqa: PLC0415 -- slow to import
 
         places = np.arange(len(self))
@@ -188,14 +146,18 @@ class Shortlist:
             "output_evenness": e.output_evenness[places],
             "highest_capacitor_voltage_V": e.highest_capacitor_voltage[places],
             "highest_blocking_voltage_V": e.highest_blocking_voltage[places],
+            "floating_drives": e.floating_drives[places],
             "pareto": self.pool.pareto[places],
             "wiring": [self.pool.code(k) for k in places.tolist()],
         }
         for level, volts in levels.items():
             values[f"efficiency_{level}"] = efficiency(self.brief, ratio, impedance, volts)
             values[f"ceiling_{level}"] = ceiling(self.brief, ratio, volts)
-        frame = pd.DataFrame({column.name: values[column.name] for column in COLUMNS})
-        frame.attrs["units"] = {column.name: column.unit for column in COLUMNS}
+        if e.sized is not None:
+            ideal = np.abs(ratio) * self.brief.input_nominal
+            values.update(loss_values(rows_of(e.sized, places), area, ideal))
+        frame = pd.DataFrame({column.name: values[column.name] for column in self.columns})
+        frame.attrs["units"] = {column.name: column.unit for column in self.columns}
         frame.attrs.update(self.provenance)
         return frame
 

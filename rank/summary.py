@@ -22,6 +22,7 @@ def assumptions(brief: Brief) -> list[tuple[str, str]]:
         f"{name} at most {format_quantity(value, 'mm2')}" for name, value in budgets if value is not None
     )
     use = "least acceptable output" if brief.use == "fixed-ratio" else "output that is held"
+    by = f" by the {brief.regulation}" if brief.use == "regulated" and brief.counts_losses else ""
     rating = (
         "ideal voltages at the highest input"
         if brief.use == "fixed-ratio"
@@ -38,13 +39,14 @@ def assumptions(brief: Brief) -> list[tuple[str, str]]:
             )
             + " (least / nominal / highest)",
         ),
-        ("use", f"{brief.use}, {use} {format_quantity(brief.required, 'V', 4)}"),
-        ("load", format_quantity(brief.current, "A", 4)),
-        ("switching frequency", f"{format_quantity(brief.frequency, 'Hz', 4)}, duty 50 %"),
+        ("use", f"{brief.use}, {use} {format_quantity(brief.required, 'V', 4)}{by}"),
+        ("load", _load(brief)),
+        ("objective", _objective(brief)),
+        ("switching frequency", f"{_frequency(brief)}, {_duty(brief)}"),
         ("budgets", area or "area is free"),
         (
             "efficiency floor",
-            "none" if floor is None else f"{format_quantity(floor, '1')} at the worst input",
+            "none" if floor is None else f"{format_quantity(floor, '1')} {_where_floor_holds(brief)}",
         ),
         ("ratios", "any that hold the output" if brief.ratios is None else ", ".join(map(str, brief.ratios))),
         (
@@ -55,9 +57,68 @@ def assumptions(brief: Brief) -> list[tuple[str, str]]:
         ("technology", f"{brief.technology.name}: {brief.technology.title}"),
         ("element ratings", rating),
         ("output impedance", "blend sqrt(R_SSL^2 + R_FSL^2)"),
-        ("efficiency", "conduction only: no gate drive, plate, leakage or controller loss"),
-        ("areas", "least that use the whole droop budget at the least input; continuous, no part sizes"),
+        *_how_counted(brief),
+        (
+            "gate drive",
+            "all switches from the rails" if brief.drive == "rails" else "floating supplies allowed, counted",
+        ),
     ]
+
+
+def _how_counted(brief: Brief) -> list[tuple[str, str]]:
+    if not brief.counts_losses:
+        return [
+            ("efficiency", "conduction only: no gate drive, plate, leakage or controller loss"),
+            ("areas", "least that use the whole droop budget at the least input; continuous, no part sizes"),
+        ]
+    return [
+        ("efficiency", "all losses of the table, at full load; voltages without droop or ripple"),
+        ("areas", "best for the objective within the droop budget at the least input; continuous"),
+        ("classes", "improved at the prices of the sizes until nothing is gained; switches in chains"),
+    ]
+
+
+_OBJECTIVES = {
+    "conduction-area": "least area whose conduction meets the droop",
+    "least-loss": "least loss within the area, all losses counted",
+    "least-area": "least area that keeps the efficiency floor, all losses counted",
+    "power-density": "greatest power density that keeps the efficiency floor, all losses counted, load free",
+}
+
+
+def _objective(brief: Brief) -> str:
+    text = _OBJECTIVES[brief.objective]
+    return text + (", mean over the load profile" if brief.profile else "")
+
+
+def _frequency(brief: Brief) -> str:
+    highest = format_quantity(brief.frequency, "Hz", 4)
+    if brief.frequency_minimum is None:
+        return highest
+    return f"{format_quantity(brief.frequency_minimum, 'Hz', 4)} to {highest}"
+
+
+def _duty(brief: Brief) -> str:
+    return "duty free" if brief.duty is None else f"duty {format_quantity(brief.duty, '1')}"
+
+
+def _load(brief: Brief) -> str:
+    full = format_quantity(brief.current, "A", 4)
+    if brief.objective == "power-density" and brief.current_least is not None:
+        return f"{format_quantity(brief.current_least, 'A', 4)} to {full}"
+    if not brief.profile:
+        return full
+    points = ", ".join(
+        f"{format_quantity(point.share, '1')} "
+        + ("asleep" if point.asleep else format_quantity(point.current, "A", 4))
+        + ("" if point.volts is None else f" at {format_quantity(point.volts, 'V', 4)}")
+        for point in brief.profile
+    )
+    return f"{full} at most; {points}"
+
+
+def _where_floor_holds(brief: Brief) -> str:
+    return "at the nominal input" if brief.objective == "power-density" else "at the worst input"
 
 
 def verdict(shortlist: Shortlist) -> list[str]:
@@ -79,11 +140,38 @@ def verdict(shortlist: Shortlist) -> list[str]:
     elif shortlist.best_family_place == 1:
         lines.append("The best candidate is a family member.")
     else:
+        place = shortlist.best_family_place
+        share, what = format_quantity(1 / gain, "1"), _WHAT[shortlist.brief.objective]
+        if shortlist.brief.objective == "power-density":
+            share = format_quantity(gain, "1")
         lines.append(
-            f"The best candidate takes {format_quantity(1 / gain, '1')} of the area of the best family member, "
-            f"at place {shortlist.best_family_place}."
+            f"The best candidate has {share} of the {what} of the best family member, at place {place}."
         )
+    lines += _certificate(shortlist)
     for one in shortlist.included:
         where = f"place {one.place} of {len(pool)}" if one.place else f"left out, {one.reason}"
         lines.append(f"Included {one.id} ({one.wiring}): {where}.")
     return lines
+
+
+_WHAT = {
+    "conduction-area": "area",
+    "least-loss": "loss",
+    "least-area": "area",
+    "power-density": "power density",
+}
+
+
+def _certificate(shortlist: Shortlist) -> list[str]:
+    """Say how far the sizes are proven."""
+    sized = shortlist.pool.evaluation.sized
+    if sized is None or not len(shortlist.pool):
+        return []
+    proven = int(sized.proven.sum())
+    if proven == len(shortlist.pool):
+        return [
+            f"Sizes: the optimum of all {proven} candidates is proven to a relative 1e-9, for their classes."
+        ]
+    return [
+        f"Sizes: the optimum of {proven} of {len(shortlist.pool)} candidates is proven to a relative 1e-9."
+    ]

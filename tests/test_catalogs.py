@@ -22,7 +22,12 @@ BOARD = {one.name: one for one in (*BOARD_TECHNOLOGY.capacitors, *BOARD_TECHNOLO
 
 def test_every_shipped_file_loads():
     assert catalogs.names("technologies") == ("board-discrete", "chip-180nm")
-    assert catalogs.names("briefs") == ("greenhouse-node", "greenhouse-node-regulated", "pump-shelf")
+    assert catalogs.names("briefs") == (
+        "greenhouse-node",
+        "greenhouse-node-losses",
+        "greenhouse-node-regulated",
+        "pump-shelf",
+    )
     for name in catalogs.names("technologies"):
         technology = load_technology(name)
         assert technology.name == name

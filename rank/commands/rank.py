@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING
 import click
 
 if TYPE_CHECKING:
+    from capmuster.rank.brief import Brief
     from capmuster.rank.shortlist import Shortlist
 
 # The columns of the table and their headings: short, so that it fits a terminal.
@@ -29,6 +30,24 @@ _IN_TERMINAL = {
     "pareto": "Pareto\nset",
     "families": "families",
 }
+_WITH_LOSSES = {
+    "place": "place",
+    "id": "id",
+    "ratio": "ratio",
+    "flying_capacitors": "flying\ncaps",
+    "switches": "switches",
+    "loss_W": "loss\n[W]",
+    "area_mm2": "area\n[mm²]",
+    "frequency_Hz": "frequency\n[Hz]",
+    "impedance_ohm": "R_out\n[Ω]",
+    "efficiency_minimum": "least",
+    "efficiency_nominal": "nominal",
+    "efficiency_maximum": "highest",
+    "power_density_W_per_mm2": "density\n[W/mm²]",
+    "floating_drives": "floating\ndrives",
+    "pareto": "Pareto\nset",
+    "families": "families",
+}
 _GROUPS = (
     ("efficiency_minimum", "efficiency_maximum", "efficiency [%] at V_in"),
     ("ceiling_minimum", "ceiling_maximum", "ceiling [%] at V_in"),
@@ -38,6 +57,11 @@ _FAMILIES_WIDTH = 24
 _LEGEND = (
     "G: output conductance 1/R_out at that area. Ceiling: required output over M V_in.\n"
     "V_block: highest voltage that a switch must block."
+)
+
+_LOSS_LEGEND = (
+    "Loss, frequency, R_out and density (output power per area) at the nominal input and full load.\n"
+    "Floating drives: switches whose gates need a supply of their own. Each loss: --format csv, or export."
 )
 
 
@@ -63,10 +87,11 @@ _LEGEND = (
     help="How rows are written.",
 )
 def command(brief: str, top: int, include: tuple[str, ...], form: str) -> None:
-    """Rank every converter that can do the job of BRIEF by area efficiency.
+    """Rank every converter that can do the job of BRIEF.
 
-    BRIEF is the name of a shipped brief or a TOML file. The least area that meets the droop budget comes
-    first.
+    BRIEF is the name of a shipped brief or a TOML file. Its objective decides what comes first: the least
+    area that meets the droop budget, or, with all losses counted, the least loss, the least area or the
+    greatest power density.
     """
     from capmuster.rank.commands.ranking import ranked  # noqa: PLC0415 -- nothing heavy before it is needed
 
@@ -91,20 +116,31 @@ def _write_table(found: Shortlist) -> None:
     click.echo()
     if len(found):
         click.echo(_table(found))
-        click.echo(f"\n{_LEGEND}\n")
+        click.echo(f"\n{_LOSS_LEGEND if found.brief.counts_losses else _LEGEND}\n")
     for line in verdict(found):
         click.echo(line)
     for text in found.cautions:
         click.echo(f"Caution: {text}")
 
 
+def _shown(brief: Brief) -> dict[str, str]:
+    """Columns of the table and their headings."""
+    if not brief.counts_losses:
+        return _IN_TERMINAL
+    mean = (
+        {"profile_loss_W": "mean\nloss [W]", "profile_efficiency": "mean\neff. [%]"} if brief.profile else {}
+    )
+    items = list(_WITH_LOSSES.items())
+    return dict([*items[:5], *mean.items(), *items[5:]])
+
+
 def _table(found: Shortlist) -> str:
     from capmuster.rank.export_text import cell  # noqa: PLC0415
     from capmuster.rank.rows import figures, text_table  # noqa: PLC0415
-    from capmuster.rank.shortlist import COLUMNS  # noqa: PLC0415
 
-    names = list(_IN_TERMINAL)
-    column_of = {column.name: column for column in COLUMNS}
+    shown = _shown(found.brief)
+    names = list(shown)
+    column_of = {column.name: column for column in found.columns}
     cells = []
     for name in names:
         values = found.frame[name].tolist()
@@ -115,8 +151,8 @@ def _table(found: Shortlist) -> str:
         else:
             cells.append([cell(column_of[name], value) for value in values])
     return text_table(
-        list(_IN_TERMINAL.values()),
+        list(shown.values()),
         list(zip(*cells, strict=True)),
         [name not in _FLUSH_LEFT for name in names],
-        [(names.index(first), names.index(last), text) for first, last, text in _GROUPS],
+        [(names.index(first), names.index(last), text) for first, last, text in _GROUPS if first in shown],
     )
