@@ -1,0 +1,137 @@
+"""The best candidates of a brief when they are built from parts, and what is proven about them."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+if TYPE_CHECKING:
+    from capmuster.enumerate.wiring import Converter
+    from capmuster.rank.brief import Brief
+    from capmuster.rank.discrete.blends import Blend
+    from capmuster.rank.discrete.design import Condition, Filling
+    from capmuster.rank.parts_request import PartsRequest
+
+
+@dataclass(frozen=True, slots=True)
+class Finalist:
+    """A converter with the best parts for it.
+
+    Attributes
+    ----------
+    converter
+        The converter.
+    area_place
+        Its place by area in continuous sizing, counted from 1.
+    frequency
+        Switching frequency [Hz], the best of those asked for.
+    fillings
+        Its capacitors and switches with their parts.
+    operating
+        What it does at the input where losses count.
+    conditions
+        What it does at the least, nominal and highest input.
+    objective, bound, relaxed
+        What is made least [W, mm2 or EUR], a value that no choice of parts goes below, proven by the integer
+        solver, and the continuous bound.
+    proven
+        Whether the integer solver proved that no choice is better at any of the frequencies.
+    """
+
+    converter: Converter
+    area_place: int
+    frequency: float
+    fillings: tuple[Filling, ...]
+    operating: Condition
+    conditions: tuple[Condition, Condition, Condition]
+    objective: float
+    bound: float
+    relaxed: float
+    proven: bool
+
+    @property
+    def gap(self) -> float:
+        """Relative distance of the bound [1]."""
+        return (self.objective - self.bound) / self.objective
+
+    @property
+    def footprint(self) -> float:
+        """Footprint of all parts and drivers [mm2]."""
+        return math.fsum(one.footprint for one in self.fillings)
+
+    @property
+    def price(self) -> float:
+        """Price of all parts and drivers [EUR]."""
+        return math.fsum(one.price for one in self.fillings)
+
+    @property
+    def parts(self) -> int:
+        """Number of parts [1]."""
+        return sum(one.number for one in self.fillings)
+
+    @property
+    def highest_stress(self) -> float:
+        """Highest voltage over derated rating of all elements [1]."""
+        return max(one.stress for one in self.fillings)
+
+
+@dataclass(frozen=True, slots=True)
+class PartsShortlist:
+    """The finalists of a brief and what stands behind them.
+
+    Attributes
+    ----------
+    brief
+        What is asked for.
+    request
+        What is asked of the parts, resolved.
+    blend
+        How R_SSL and R_FSL are joined.
+    finalists
+        Best first.
+    candidates
+        Candidates that meet the brief.
+    screened
+        How many of them, the first by area, were looked at.
+    searched
+        For how many of these the best parts were searched; every other one's bound is above the last place.
+    exact
+        Whether every one of these searches was exhaustive.
+    left_out
+        How many were left out, by reason.
+    """
+
+    brief: Brief
+    request: PartsRequest
+    blend: Blend
+    finalists: tuple[Finalist, ...]
+    candidates: int
+    screened: int
+    searched: int
+    exact: bool
+    left_out: dict[str, int]
+
+    def __len__(self) -> int:
+        """Return the number of finalists."""
+        return len(self.finalists)
+
+    @property
+    def certificate(self) -> str:
+        """What is proven, in one sentence."""
+        if not self.finalists:
+            return "No candidate can be built from the stock within the limits."
+        proven = all(one.proven for one in self.finalists)
+        gap = max(one.gap for one in self.finalists)
+        parts = (
+            f"The parts of every finalist are proven best, to a relative gap of {gap:.1e}"
+            if proven
+            else f"The parts of the finalists are within {gap:.1e} of the best; not all are proven best"
+        )
+        if not self.exact:
+            return f"{parts}. Some searches were cut short: another candidate might be better."
+        which = "all" if self.screened == self.candidates else f"the first {self.screened} by area of"
+        return (
+            f"{parts}. No other of {which} {self.candidates} candidates has less {self.request.least} "
+            f"than place {len(self.finalists)}."
+        )

@@ -1,0 +1,272 @@
+"""The choice of parts of one converter as a problem: what can be chosen, what it costs, what must hold."""
+
+from __future__ import annotations
+
+import math
+from collections import defaultdict
+from dataclasses import dataclass, replace
+from typing import TYPE_CHECKING, Final, TypeAlias
+
+import numpy as np
+
+from capmuster.enumerate.errors import CapmusterError
+from capmuster.rank.discrete.options import exact
+
+if TYPE_CHECKING:
+    from collections.abc import Sequence
+    from fractions import Fraction
+
+    from numpy.typing import NDArray
+
+    from capmuster.rank.brief import Brief
+    from capmuster.rank.discrete.blends import Blend
+    from capmuster.rank.discrete.options import OptionBook, Options
+    from capmuster.rank.discrete.slots import Slot
+    from capmuster.rank.parts_request import Aim, PartsRequest
+
+Selection: TypeAlias = tuple[tuple[int, ...], ...]
+"""For each group, the option of each of its members: as many numbers as members, rising."""
+
+SLACK: Final = 1e-9
+"""Relative rounding that a limit on loss or impedance forgives."""
+
+
+@dataclass(frozen=True, slots=True)
+class Group:
+    """Elements that are alike: same charge, same voltages, so the same options.
+
+    Attributes
+    ----------
+    names
+        Their names.
+    options
+        The ways to build one of them, impedances for its multiplier.
+    """
+
+    names: tuple[str, ...]
+    options: Options
+
+
+@dataclass(frozen=True, slots=True)
+class Totals:
+    """Sums over all elements of a choice.
+
+    Attributes
+    ----------
+    slow, fast
+        R_SSL and R_FSL [ohm].
+    fixed
+        Loss by gate drive and output charge [W].
+    footprint, price
+        In whole units.
+    """
+
+    slow: float
+    fast: float
+    fixed: float
+    footprint: int
+    price: int
+
+
+@dataclass(frozen=True, slots=True)
+class Problem:
+    """What is chosen, made least and limited.
+
+    Attributes
+    ----------
+    groups
+        What is chosen.
+    blend
+        How R_SSL and R_FSL are joined.
+    square_current
+        I^2 [A2].
+    conducts
+        Whether conduction loss follows from the impedance; not where the output is held.
+    offset
+        Loss that no choice changes [W].
+    least
+        What is made least.
+    limit
+        Most of conduction loss plus `share` times fixed loss [W]; infinite without a target.
+    share
+        Weight of the fixed loss in the limit [1].
+    impedance_limit
+        Most of the blend [ohm].
+    footprint, price
+        Budgets in whole units, or None.
+    """
+
+    groups: tuple[Group, ...]
+    blend: Blend
+    square_current: float
+    conducts: bool
+    offset: float
+    least: Aim
+    limit: float
+    share: float
+    impedance_limit: float
+    footprint: int | None
+    price: int | None
+
+    def totals(self, selection: Selection) -> Totals:
+        """Add up a choice."""
+        slow = fast = fixed = 0.0
+        footprint = price = 0
+        for group, chosen in zip(self.groups, selection, strict=True):
+            o, rows = group.options, list(chosen)
+            slow += math.fsum(o.slow[rows])
+            fast += math.fsum(o.fast[rows])
+            fixed += math.fsum(o.fixed[rows])
+            footprint += int(o.footprint[rows].sum())
+            price += int(o.price[rows].sum())
+        return Totals(slow, fast, fixed, footprint, price)
+
+    def conduction(self, totals: Totals) -> float:
+        """I^2 times the blend [W], or 0 where the output is held."""
+        if not self.conducts:
+            return 0.0
+        return self.square_current * float(self.blend.value(totals.slow, totals.fast))
+
+    def cost(self, totals: Totals) -> float:
+        """Conduction loss plus weighted fixed loss [W]: what is made least, or limited."""
+        weight = 1.0 if self.least == "loss" else self.share
+        return self.conduction(totals) + weight * totals.fixed
+
+    def objective(self, totals: Totals) -> float:
+        """Return what is made least: the loss that a choice changes [W], or whole units."""
+        return self.cost(totals) if self.least == "loss" else getattr(totals, self.least)
+
+    def fits(self, totals: Totals) -> bool:
+        """Whether a choice keeps within every budget and limit."""
+        return (
+            (self.footprint is None or totals.footprint <= self.footprint)
+            and (self.price is None or totals.price <= self.price)
+            and float(self.blend.value(totals.slow, totals.fast)) <= self.impedance_limit * (1 + SLACK)
+            and (self.limit == math.inf or self.cost(totals) <= self.limit * (1 + SLACK))
+        )
+
+
+def operating_input(brief: Brief) -> float:
+    """Input voltage at which losses count [V].
+
+    Fixed-ratio use: the nominal one. Regulated use: the lowest one, where the frequency is highest and the
+    droop must still leave the output.
+    """
+    return brief.input_nominal if brief.use == "fixed-ratio" else brief.input_minimum
+
+
+def resolved(request: PartsRequest, brief: Brief) -> PartsRequest:
+    """Fill in what a request leaves to the brief: deratings, the footprint budget, the target.
+
+    Raises
+    ------
+    CapmusterError
+        If what is asked for has no end: least loss without a budget, least footprint or price without target.
+    """
+    technology = brief.technology
+    footprint = request.footprint
+    areas = [one for one in (brief.area, brief.silicon_area, brief.capacitor_area) if one is not None]
+    if footprint is None and request.least == "loss" and request.price is None:
+        if not areas:
+            raise CapmusterError(
+                "parts: least loss without a budget would take parts without end",
+                accepted="a footprint or a price, or an area in the brief",
+            )
+        footprint = sum(areas)
+    efficiency = request.efficiency
+    if request.least != "loss" and request.loss is None and efficiency is None:
+        efficiency = brief.efficiency_floor
+        if efficiency is None:
+            raise CapmusterError(
+                f"parts: least {request.least} without a target would take the poorest parts",
+                accepted="a loss or an efficiency, or an efficiency in the brief",
+            )
+    return replace(
+        request,
+        footprint=footprint,
+        efficiency=efficiency,
+        capacitor_derating=request.capacitor_derating or technology.capacitor_derating,
+        switch_derating=request.switch_derating or technology.switch_derating,
+    )
+
+
+def pose(
+    slots: Sequence[Slot],
+    ratio: Fraction,
+    brief: Brief,
+    book: OptionBook,
+    blend: Blend,
+    *,
+    pruned: bool = True,
+) -> Problem:
+    """Pose the problem of one converter.
+
+    Parameters
+    ----------
+    slots
+        What must be built.
+    ratio
+        M.
+    brief
+        Its use.
+    book
+        Ways to build elements, of a resolved request.
+    blend
+        How R_SSL and R_FSL are joined.
+    pruned
+        Whether options that another one beats are left out.
+
+    Raises
+    ------
+    NoPartError
+        If no part of the stock stands some voltage.
+    """
+    request, volts = book.request, operating_input(brief)
+    alike: dict[tuple[str, Fraction, Fraction, float], list[str]] = defaultdict(list)
+    for slot in slots:
+        alike[slot.kind, slot.multiplier, slot.ideal, slot.voltage].append(slot.name)
+    groups = []
+    for (kind, multiplier, ideal, voltage), names in alike.items():
+        operating = float(ideal) * volts
+        if kind == "capacitor":
+            options = book.capacitor(voltage, operating, pruned=pruned)
+        else:
+            options = book.switch(voltage, operating, idle=not multiplier, pruned=pruned)
+        groups.append(Group(tuple(names), options.scaled(float(multiplier) ** 2)))
+    held = brief.use == "regulated"
+    ideal_power = abs(float(ratio)) * volts * brief.current
+    overhead = brief.technology.controller_power
+    lead = brief.technology.wiring_resistance
+    square = brief.current**2
+    offset = overhead + (ideal_power - abs(brief.required) * brief.current if held else square * lead)
+    limit, share = math.inf, 1.0
+    if request.loss is not None:
+        limit = request.loss - offset
+    elif request.efficiency is not None and held:
+        limit = abs(brief.required) * brief.current / request.efficiency - ideal_power - overhead
+    elif request.efficiency is not None:
+        # efficiency = (M V I - I^2 R) / (M V I + Q) >= eta is I^2 R + eta Q <= (1 - eta) M V I
+        share = request.efficiency
+        limit = (1 - share) * ideal_power - square * lead - share * overhead
+    budget_unit = ((request.footprint, book.units.per_mm2), (request.price, book.units.per_eur))
+    footprint, price = (
+        None if budget is None else math.floor(exact(budget) * per) for budget, per in budget_unit
+    )
+    return Problem(
+        groups=tuple(groups),
+        blend=blend,
+        square_current=square,
+        conducts=not held,
+        offset=offset,
+        least=request.least,
+        limit=limit,
+        share=share,
+        impedance_limit=float(brief.r_max(float(ratio))) - lead,
+        footprint=footprint,
+        price=price,
+    )
+
+
+def stacked(problem: Problem, name: str) -> NDArray[np.float64]:
+    """One figure of every option, group after group."""
+    return np.concatenate([np.asarray(getattr(g.options, name), dtype=np.float64) for g in problem.groups])
