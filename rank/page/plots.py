@@ -128,7 +128,7 @@ def loss_plot(bars: Sequence[LossBar]) -> str:
 
 def impedance_plot(curve: ImpedanceCurve) -> str:
     """Plot the exact output impedance and both limits over frequency, with the design's point."""
-    left, right, top, bottom = 62.0, 450.0, 64.0, 270.0
+    left, right, top, bottom = 62.0, 440.0, 64.0, 270.0
     x = log_axis(float(curve.frequency[0]), float(curve.frequency[-1]), left, right)
     y = log_axis(0.8 * float(curve.exact.min()), float(curve.exact.max()), bottom, top)
     parts = [_open(470.0, 306.0, "Output impedance over frequency")]
