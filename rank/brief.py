@@ -22,6 +22,7 @@ if TYPE_CHECKING:
     from numpy.typing import ArrayLike, NDArray
 
     from capmuster.rank.brief_file import BriefFile
+    from capmuster.rank.parts_request import PartsRequest
     from capmuster.rank.tomlplace import Path
 
 Objective = Literal["conduction-area", "least-loss", "least-area", "power-density"]
@@ -96,6 +97,8 @@ class Brief:
         Peak-to-peak ripple that the capacitors at output and input must keep [V], or None.
     copies
         Interleaved copies that share the load.
+    parts
+        What is asked of discrete parts, or None.
 
     Raises
     ------
@@ -132,6 +135,7 @@ class Brief:
     output_ripple: float | None = None
     input_ripple: float | None = None
     copies: int = 1
+    parts: PartsRequest | None = None
 
     def __post_init__(self) -> None:
         """Check the values against each other."""
@@ -159,6 +163,7 @@ class Brief:
         content["technology"] = self.technology.fingerprint
         content["profile"] = [asdict(point) for point in self.profile]
         content["tolerance"] = None if self.tolerance is None else asdict(self.tolerance)
+        content["parts"] = None if self.parts is None else self.parts.content()
         content["ratios"] = None if self.ratios is None else [str(ratio) for ratio in self.ratios]
         return fingerprint(content)
 
@@ -223,13 +228,18 @@ def load_brief(name_or_path: str | FilePath) -> Brief:
     except CapmusterError as error:
         place = error.place or places.place(("technology",))
         raise CapmusterError(f"technology: {error.problem}", accepted=error.accepted, place=place) from None
+    parts = None
+    if content.parts is not None:
+        from capmuster.rank.parts_request import request_of  # noqa: PLC0415
+
+        parts = request_of(content.parts, path.parent, places)
     try:
-        return _brief(content, technology, path.stem)
+        return _brief(content, technology, path.stem, parts)
     except FaultsError as error:
         raise FaultsError(error.faults, places) from None
 
 
-def _brief(content: BriefFile, technology: Technology, name: str) -> Brief:
+def _brief(content: BriefFile, technology: Technology, name: str, parts: PartsRequest | None) -> Brief:
     derating, design, search, output = content.derating, content.design, content.search, content.output
     if derating is not None:
         technology = replace(
@@ -268,6 +278,7 @@ def _brief(content: BriefFile, technology: Technology, name: str) -> Brief:
         output_ripple=output.ripple,
         input_ripple=content.input.ripple,
         copies=design.copies,
+        parts=parts,
     )
 
 

@@ -9,6 +9,7 @@ from pydantic import BeforeValidator, model_validator
 
 from capmuster.enumerate.errors import CapmusterError
 from capmuster.rank.faults import Fault, raise_faults
+from capmuster.rank.parts_section import PartsSection  # noqa: TC001 - pydantic reads the annotations
 from capmuster.rank.quantity import parse_quantity, parse_ratio, show_value
 from capmuster.rank.tomlfile import Line, Section, choice, quantity, whole
 
@@ -191,3 +192,4 @@ class BriefFile(Section):
     design: DesignTable
     derating: DeratingTable | None = None
     tolerance: ToleranceTable | None = None
+    parts: PartsSection | None = None

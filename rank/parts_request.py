@@ -6,7 +6,8 @@ import math
 from dataclasses import asdict, dataclass
 from typing import TYPE_CHECKING, Final, Literal
 
-from capmuster.rank.faults import Fault, raise_faults
+from capmuster.enumerate.errors import CapmusterError
+from capmuster.rank.faults import Fault, FaultsError, raise_faults
 from capmuster.rank.parts import Stock, load_stock
 
 if TYPE_CHECKING:
@@ -14,6 +15,7 @@ if TYPE_CHECKING:
     from pathlib import Path
 
     from capmuster.rank.parts_section import PartsSection
+    from capmuster.rank.tomlplace import Places
 
 Aim = Literal["loss", "footprint", "price"]
 """What is made least."""
@@ -93,11 +95,39 @@ class PartsRequest:
         return {"stock": self.stock.fingerprint, **{name: getattr(self, name) for name in names}}
 
 
-def request_of(section: PartsSection, beside: Path) -> PartsRequest:
-    """Make the request that the ``[parts]`` table of a brief holds, with its catalogs loaded."""
-    content = section.model_dump(exclude={"capacitors", "switches"})
+def request_of(section: PartsSection, beside: Path, places: Places) -> PartsRequest:
+    """Make the request that the ``[parts]`` table of a brief holds, with its catalogs loaded.
+
+    Parameters
+    ----------
+    section
+        The table.
+    beside
+        Folder that relative paths of catalogs start from.
+    places
+        Lines of the brief, for messages.
+
+    Raises
+    ------
+    CapmusterError
+        If a catalog is unknown or not valid, or a value is not allowed.
+    """
+    from capmuster.rank.parts_file import locate_parts  # noqa: PLC0415 -- for those who read files
+
+    for field in ("capacitors", "switches"):
+        try:
+            locate_parts(getattr(section, field), beside)
+        except CapmusterError as error:
+            raise CapmusterError(
+                f"parts.{field}: {error.problem}",
+                accepted=error.accepted,
+                place=places.place(("parts", field)),
+            ) from None
     stock = load_stock(section.capacitors, section.switches, beside=beside)
-    return PartsRequest(stock=stock, **content)
+    try:
+        return PartsRequest(stock=stock, **section.model_dump(exclude={"capacitors", "switches"}))
+    except FaultsError as error:
+        raise FaultsError(error.faults, places) from None
 
 
 _LIMITS: Final = (
