@@ -37,10 +37,13 @@ class _LazyGroup(click.Group):
 
 
 @click.group(
-    cls=_LazyGroup, context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100}
+    cls=_LazyGroup,
+    invoke_without_command=True,
+    context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100},
 )
 @click.version_option(__version__, prog_name="capmuster")
-def group() -> None:
+@click.pass_context
+def group(context: click.Context) -> None:
     """Find, rank and export two-phase switched-capacitor converters.
 
     \b
@@ -50,6 +53,8 @@ def group() -> None:
     The best ones for a rail:        capmuster rank greenhouse-node
     A shortlist for the review:      capmuster export greenhouse-node --to shortlist.xlsx
     """
+    if context.invoked_subcommand is None:
+        click.echo(context.get_help())
 
 
 def main(arguments: Sequence[str] | None = None) -> None:
@@ -59,6 +64,11 @@ def main(arguments: Sequence[str] | None = None) -> None:
         sys.stdout.flush()
     except CapmusterError as error:
         click.echo(f"capmuster: {error}", err=True)
+        status = _BAD_INPUT
+    except click.UsageError as error:
+        path = error.ctx.command_path if error.ctx else "capmuster"
+        message = " ".join(error.format_message().split()).rstrip(".")
+        click.echo(f"capmuster: {message}; see {path} --help", err=True)
         status = _BAD_INPUT
     except click.ClickException as error:
         error.show()

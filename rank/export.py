@@ -42,8 +42,7 @@ def export(shortlist: Shortlist, paths: Sequence[str | Path]) -> None:
     """
     renderers = check_targets(paths)
     contents = [render(shortlist) for render in renderers]
-    for path, content in zip(paths, contents, strict=True):
-        write_whole(Path(path), content)
+    write_all([Path(path) for path in paths], contents)
 
 
 def check_targets(paths: Sequence[str | Path]) -> list[Callable[[Shortlist], bytes]]:
@@ -59,7 +58,8 @@ def check_targets(paths: Sequence[str | Path]) -> list[Callable[[Shortlist], byt
     for path in map(Path, paths):
         suffix = path.suffix.lower()
         if suffix not in _RENDERERS:
-            raise CapmusterError(f"to: '{path}' has the suffix '{path.suffix}'", accepted=", ".join(SUFFIXES))
+            has = f"the unknown suffix '{path.suffix}'" if suffix else "no suffix"
+            raise CapmusterError(f"to: '{path}' has {has}", accepted=", ".join(SUFFIXES))
         if path.resolve() in seen:
             raise CapmusterError(f"to: '{path}' is named twice", accepted="each file once")
         seen.add(path.resolve())
@@ -75,7 +75,7 @@ def check_writable(path: Path) -> None:
     Raises
     ------
     CapmusterError
-        When its folder does not exist or cannot be written, or it is a folder itself.
+        When its folder does not exist or cannot be written, or it is a folder or write-protected.
     """
     if path.is_dir():
         raise CapmusterError(f"to: '{path}' is a folder", accepted="a file name")
@@ -87,18 +87,44 @@ def check_writable(path: Path) -> None:
         raise CapmusterError(
             f"to: folder '{path.parent}' cannot be written", accepted="a folder that can be written"
         )
+    if path.exists() and not os.access(path, os.W_OK):
+        raise CapmusterError(f"to: '{path}' is write-protected", accepted="a file that may be replaced")
 
 
-def write_whole(path: Path, content: bytes) -> None:
-    """Write a file so that it is either all there or untouched."""
-    handle, name = tempfile.mkstemp(dir=path.parent, prefix=f".{path.name}.")
+def write_all(paths: Sequence[Path], contents: Sequence[bytes]) -> None:
+    """Write files so that each is either all there or untouched, and none changes before all are on the disk.
+
+    Raises
+    ------
+    CapmusterError
+        When the disk is full or a folder has gone.
+    """
+    staged: list[tuple[Path, Path]] = []
+    try:
+        for path, content in zip(paths, contents, strict=True):
+            staged.append((_staged(path, content), path.resolve()))
+        for temporary, target in staged:
+            temporary.replace(target)
+    except OSError as error:
+        raise CapmusterError(f"to: {error.strerror}", accepted="a place with room to write") from None
+    finally:
+        for temporary, _ in staged:
+            temporary.unlink(missing_ok=True)
+
+
+def _staged(path: Path, content: bytes) -> Path:
+    """Write a file beside its target, under a name of its own."""
+    handle, name = tempfile.mkstemp(dir=path.resolve().parent, prefix=f".{path.name}.")
+    temporary = Path(name)
     try:
         with os.fdopen(handle, "wb") as file:
             file.write(content)
+            file.flush()
+            os.fsync(file.fileno())
         mask = os.umask(0)
         os.umask(mask)
-        Path(name).chmod(0o666 & ~mask)
-        Path(name).replace(path)
+        temporary.chmod(0o666 & ~mask)
     except BaseException:
-        Path(name).unlink(missing_ok=True)
+        temporary.unlink(missing_ok=True)
         raise
+    return temporary

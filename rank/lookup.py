@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from typing import TYPE_CHECKING
 
 from capmuster.enumerate.errors import CapmusterError, IllPosedError
@@ -12,6 +13,7 @@ if TYPE_CHECKING:
     from collections.abc import Iterable
 
 _ACCEPTED = "a wiring code such as 'I-G/O-I', or an id as list and rank print it"
+_AN_ID = re.compile(r"[0-9]+-[0-9a-z]+")
 _LARGEST_FAMILY_MEMBER = 64
 
 
@@ -28,6 +30,8 @@ def find_converter(text: str) -> Converter:
     text = text.strip()
     if "/" in text or not text:
         return Converter.parse(text)
+    if not _AN_ID.fullmatch(text):
+        raise CapmusterError(f"{text!r} is neither a wiring code nor an id", accepted=_ACCEPTED)
     words = words_of_id(text)
     unknown = CapmusterError(f"id '{text}' is unknown", accepted=_ACCEPTED)
     if words is None:
