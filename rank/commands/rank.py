@@ -127,11 +127,10 @@ def _shown(brief: Brief) -> dict[str, str]:
     """Columns of the table and their headings."""
     if not brief.counts_losses:
         return _IN_TERMINAL
-    mean = (
-        {"profile_loss_W": "mean\nloss [W]", "profile_efficiency": "mean\neff. [%]"} if brief.profile else {}
-    )
     items = list(_WITH_LOSSES.items())
-    return dict([*items[:5], *mean.items(), *items[5:]])
+    if brief.profile:
+        items[5:5] = [("profile_loss_W", "mean\nloss [W]"), ("profile_efficiency", "mean\neff. [%]")]
+    return dict(items)
 
 
 def _table(found: Shortlist) -> str:
