@@ -124,8 +124,9 @@ def _sorted_keys(plates: _Plates, first: int) -> _Ints:
         plus, minus_vertex = plates.vertices[phase]
         for vertex in (np.where(flip, minus_vertex, plus), np.where(flip, plus, minus_vertex)):
             keys = (keys << _VERTEX_BITS) | vertex
-    sort_columns(keys)
-    return keys
+    sorted_keys: _Ints = keys
+    sort_columns(sorted_keys)
+    return sorted_keys
 
 
 def _named_least(keys: _Ints) -> tuple[_Ints, _Ints]:

@@ -155,6 +155,16 @@ def triple_of_ratio(ratio: Fraction) -> Triple:
     return triple_of(ratio.numerator, -ratio.denominator)
 
 
+def ratios_of_triple(triple: Triple) -> tuple[Fraction, ...]:
+    """Ratios that the cells of a triple reach, ascending; (0, 1, 1) reaches 1."""
+    a, b, c = triple
+    if a == 0:
+        return (Fraction(1),)
+    found = {Fraction(-a, b), Fraction(-b, a)}
+    found |= {Fraction(p, q) for p, q in ((a, c), (c, a), (b, c), (c, b))}
+    return tuple(sorted(found))
+
+
 def converters_of(cells: CellTable, ratio: Fraction | None = None) -> ConverterTable:
     """Give cells all their roles (of one ratio or of all); a role that a symmetry repeats is given once."""
     cells = cells.take(~cells.degenerate)

@@ -67,7 +67,7 @@ def laws(skeletons: SkeletonTable) -> LawTable:
     slot = slot_of[row, place]
     capacitor, column = place // 4, place % 4
     plus_like = np.isin(column, PLUS_LIKE)
-    shape = (count, int(slots.max()))
+    shape = (count, int(slots.max(initial=0)))
 
     law = np.zeros((count, n, n - 1))
     inner_row, inner_place = np.nonzero(~outer)

@@ -104,6 +104,19 @@ def triple_of(g_a: int, g_b: int) -> Triple:
     return small, middle, large
 
 
+def triple_numbers(
+    charge_b: NDArray[np.integer], charge_c: NDArray[np.integer]
+) -> tuple[tuple[Triple, ...], NDArray[np.intp]]:
+    """Sort the triples of cells, and give each cell the place of its own, shape (N,)."""
+    key = (charge_b.astype(np.intp) + _MOST_CHARGE) * _SPAN + charge_c + _MOST_CHARGE
+    present = np.flatnonzero(np.bincount(key, minlength=_SPAN**2))
+    of_key = [triple_of(k // _SPAN - _MOST_CHARGE, k % _SPAN - _MOST_CHARGE) for k in present.tolist()]
+    triples = tuple(sorted(set(of_key)))
+    place = np.zeros(_SPAN**2, dtype=np.intp)
+    place[present] = [triples.index(triple) for triple in of_key]
+    return triples, place[key]
+
+
 def labellings(n: int) -> int:
     """Ways to tell capacitors, plates and phases apart."""
     return factorial(n) * (1 << n) * _PHASE_ORDERS

@@ -12,7 +12,7 @@ if TYPE_CHECKING:
 @contextmanager
 def one_thread() -> Iterator[None]:
     """Keep the linear algebra library to one thread; work is split over processes instead."""
-    from threadpoolctl import threadpool_limits  # noqa: PLC0415 -- only where a census is passed through
+    from threadpoolctl import threadpool_limits  # type: ignore[import-untyped]  # noqa: PLC0415 -- seldom needed
 
     with threadpool_limits(1, user_api="blas"):
         yield

@@ -7,25 +7,27 @@ for the rows that somebody asks for. Family members above the census offer the s
 from __future__ import annotations
 
 from dataclasses import dataclass
-from fractions import Fraction
 from typing import TYPE_CHECKING, Protocol
 
 import numpy as np
 
 from capmuster.enumerate.attachments import EXCHANGES
 from capmuster.enumerate.census import Addresses, cells_at
-from capmuster.enumerate.converters import ROLES, in_roles, roles_of, triple_of_ratio
+from capmuster.enumerate.converters import ROLES, in_roles, ratios_of_triple, roles_of, triple_of_ratio
 from capmuster.enumerate.laws import laws
+from capmuster.rank.cellscores import three_ports, utilisations
 from capmuster.rank.scoredcensus import scored_census, silent
 from capmuster.rank.switchtable import score, switch_table
 
 if TYPE_CHECKING:
     from collections.abc import Callable, Iterator
+    from fractions import Fraction
 
     from numpy.typing import NDArray
 
     from capmuster.enumerate.converters import ConverterTable
     from capmuster.enumerate.skeletons import SkeletonTable
+    from capmuster.rank.cellscores import CellScores
     from capmuster.rank.scoredcensus import Note
 
 _G, _I, _O = range(3)
@@ -137,35 +139,45 @@ def census_candidates(
     """
     census = scored_census(n, say)
     cells = census.cells(triple_of_ratio(ratio), clean_only=clean_only)
-    table = census.skeletons
-    # Ports A, B, C: the charges add up to zero.
-    g = _three(cells.charge_b, cells.charge_c)
+    return candidates_of(cells, census.skeletons, ratio)
+
+
+def candidates_of(cells: CellScores, skeletons: SkeletonTable, ratio: Fraction) -> CensusCandidates:
+    """Give scored cells their roles of one ratio.
+
+    Parameters
+    ----------
+    cells
+        The cells.
+    skeletons
+        The skeletons that they refer to.
+    ratio
+        M, not 0.
+    """
+    g = three_ports(cells.charge_b, cells.charge_c)
     rows, roles = roles_of(g, EXCHANGES[cells.mirror], ratio)
-    kept = cells.take(rows)
-    g = g[rows].astype(np.int64)
-    every = np.arange(len(rows))
-    output = np.argmax(ROLES[roles] == _O, axis=1) if len(rows) else every
-    g_out = g[every, output]
-    unit = laws(table).determinant[kept.skeleton].astype(np.int64)
-    magnitudes = np.sort(np.abs(g), axis=1)
-    lifted = unit * magnitudes[:, 0] * magnitudes[:, 1]
+    kept, g = cells.take(rows), g[rows].astype(np.int64)
+    output = np.argmax(ROLES[roles] == _O, axis=1) if len(rows) else rows
+    g_out = g[np.arange(len(rows)), output]
+    unit = laws(skeletons).determinant[kept.skeleton].astype(np.int64)
     volt = (unit * np.abs(g_out)).astype(np.float64)  # the input voltage in the unit of the cell's potentials
-    first = _three(kept.first_b, kept.first_c)[every, output]
-    outer = table.words == 0
+    first = three_ports(kept.first_b, kept.first_c)[np.arange(len(rows)), output]
+    capacitor_utilisation, switch_utilisation = utilisations(kept, unit)
+    outer = skeletons.words == 0
     stiff = np.all(np.any(outer[:, :, :2] & outer[:, :, 2:], axis=2), axis=1)
     measures = Measures(
-        flying_capacitors=n,
+        flying_capacitors=skeletons.n,
         switches=kept.switches.astype(np.int64),
         clean=kept.clean,
-        capacitor_utilisation=lifted / kept.capacitor_sum,
-        switch_utilisation=np.where(lifted > 0, 4 * lifted / np.maximum(kept.switch_sum, 1), 0.0),
+        capacitor_utilisation=capacitor_utilisation,
+        switch_utilisation=switch_utilisation,
         highest_capacitor_voltage=kept.highest_capacitor / volt,
         highest_blocking_voltage=kept.highest_blocking / volt,
         output_evenness=_evenness(first, g_out),
         plate_on_ports=stiff[kept.skeleton],
     )
-    where = Addresses(n, kept.skeleton, kept.attachment, np.zeros(len(rows), np.int8), kept.mirror)
-    return CensusCandidates(n, ratio, measures, table, where, roles)
+    where = Addresses(skeletons.n, kept.skeleton, kept.attachment, np.ones(len(rows), np.int8), kept.mirror)
+    return CensusCandidates(skeletons.n, ratio, measures, skeletons, where, roles)
 
 
 def census_ratios(n: int, say: Callable[[Note], None] = silent) -> tuple[Fraction, ...]:
@@ -176,14 +188,9 @@ def census_ratios(n: int, say: Callable[[Note], None] = silent) -> tuple[Fractio
     CapmusterError
         When ``n`` is beyond the census.
     """
-    found: set[Fraction] = set()
-    for a, b, c in scored_census(n, say).triples:
-        if a == 0:
-            found.add(Fraction(1))
-            continue
-        found |= {Fraction(-a, b), Fraction(-b, a)}
-        found |= {Fraction(p, q) for p, q in ((a, c), (c, a), (b, c), (c, b))}
-    return tuple(sorted(found))
+    return tuple(
+        sorted(ratio for triple in scored_census(n, say).triples for ratio in ratios_of_triple(triple))
+    )
 
 
 def candidates_between(
@@ -241,10 +248,6 @@ class FamilyCandidates:
     def table(self, rows: NDArray[np.intp] | NDArray[np.bool_]) -> ConverterTable:
         """Return the chosen rows."""
         return self.members.take(rows)
-
-
-def _three(b: NDArray[np.int16], c: NDArray[np.int16]) -> NDArray[np.int16]:
-    return np.stack([-b - c, b, c], axis=1)
 
 
 def _evenness(first: NDArray[np.integer], total: NDArray[np.int64]) -> NDArray[np.float64]:

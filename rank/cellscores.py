@@ -8,7 +8,7 @@ cells together, in integers of two bytes with one cell per column.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -90,6 +90,10 @@ class CellScores:
             **{name: np.zeros(0, kind) for name, kind in _TYPES.items()}, clean=np.zeros(0, dtype=bool)
         )
 
+    def renumbered(self, skeleton: NDArray[np.integer]) -> CellScores:
+        """Return the same cells with other numbers for their skeletons."""
+        return replace(self, skeleton=skeleton.astype(np.int32))
+
     def take(self, rows: NDArray[np.bool_] | NDArray[np.intp] | slice) -> CellScores:
         """Return the chosen rows as a table."""
         return CellScores(*(getattr(self, name)[rows] for name in self.__slots__))
@@ -116,6 +120,20 @@ def concatenate(tables: Sequence[CellScores]) -> CellScores:
     if not tables:
         return CellScores.empty()
     return CellScores(*(np.concatenate([getattr(t, name) for t in tables]) for name in CellScores.__slots__))
+
+
+def three_ports(b: NDArray[np.int16], c: NDArray[np.int16]) -> NDArray[np.int16]:
+    """Charges of ports A, B, C from those of B and C: they add up to zero; shape (N, 3)."""
+    return np.stack([-b - c, b, c], axis=1)
+
+
+def utilisations(
+    cells: CellScores, unit: NDArray[np.integer]
+) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+    """Capacitor and switch utilisation of cells, 0 for unity; ``unit``: determinants of their skeletons."""
+    magnitudes = np.sort(np.abs(three_ports(cells.charge_b, cells.charge_c).astype(np.int64)), axis=1)
+    lifted = unit * magnitudes[:, 0] * magnitudes[:, 1]
+    return lifted / cells.capacitor_sum, 4 * lifted / np.maximum(cells.switch_sum, 1)
 
 
 def score_cells(table: SkeletonTable, first: int, tally: Tally) -> Iterator[CellScores]:

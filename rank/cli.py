@@ -15,7 +15,7 @@ from capmuster.rank._version import __version__
 if TYPE_CHECKING:
     from collections.abc import Sequence
 
-_COMMANDS = ("list", "show", "draw", "rank", "export", "count")
+_COMMANDS = ("list", "show", "draw", "rank", "export", "parts", "count", "survey")
 _BAD_INPUT = 2
 _INTERRUPTED = 130
 
@@ -52,6 +52,7 @@ def group(context: click.Context) -> None:
     The same as a drawing:           capmuster draw 'I-G/O-I' --to doubler.svg
     The best ones for a rail:        capmuster rank greenhouse-node
     A shortlist for the review:      capmuster export greenhouse-node --to shortlist.xlsx
+    The parts to buy for a board:    capmuster parts pump-shelf
     """
     if context.invoked_subcommand is None:
         click.echo(context.get_help())

@@ -1,9 +1,4 @@
-"""Every converter of one ratio: the census as far as it is complete, family members beyond.
-
-Best first: by the product of capacitor and switch utilisation, because at a given capacitor energy and switch
-V-A product it goes with 1/sqrt(R_SSL R_FSL) and so needs no technology (the metrics of both limits, Seeman
-and Sanders 2008); then fewer flying capacitors, fewer switches, higher capacitor utilisation, id.
-"""
+"""Every converter of one ratio: the census as far as it is complete, family members beyond."""
 
 from __future__ import annotations
 
@@ -19,80 +14,23 @@ from capmuster.enumerate.errors import CapmusterError
 from capmuster.enumerate.families import family_names, members
 from capmuster.rank.candidates import FamilyCandidates, census_candidates
 from capmuster.rank.filters import Filters
-from capmuster.rank.frontier import frontier
+from capmuster.rank.listed import COLUMN_UNITS, Chosen, ordered, unbeaten
 from capmuster.rank.quantity import parse_ratio
 from capmuster.rank.scoredcensus import silent
 
 if TYPE_CHECKING:
-    from collections.abc import Callable, Sequence
+    from collections.abc import Callable
     from fractions import Fraction
 
     import pandas as pd
     from numpy.typing import NDArray
 
-    from capmuster.enumerate.converters import ConverterTable
-    from capmuster.rank.candidates import Candidates, Measures
+    from capmuster.rank.candidates import Candidates
+    from capmuster.rank.listed import Listed
     from capmuster.rank.scoredcensus import Note
 
 MOST_CAPACITORS = 40
 """Most flying capacitors that a listing may ask for."""
-_DIGITS_THAT_TIE = 12
-
-
-@dataclass(frozen=True, slots=True)
-class Listed:
-    """One converter of a listing.
-
-    Attributes
-    ----------
-    id, wiring
-        Short id and canonical wiring code.
-    flying_capacitors, switches
-        How many of each.
-    ratio
-        M = V_out / V_in.
-    capacitor_utilisation, switch_utilisation
-        E / sum |q v| over capacitors and 4 E / sum |q v| over switches; 0 in a unity converter.
-    highest_capacitor_voltage, highest_blocking_voltage
-        Highest voltage across a capacitor and across an open switch [V per V of input].
-    output_evenness
-        Lesser phase share of the output charge over one half: 1 when both phases feed it alike, 0 for one
-        only.
-    families
-        Names of the families that it belongs to.
-    clean
-        Whether no switch is idle or equipotential.
-    """
-
-    id: str
-    wiring: str
-    flying_capacitors: int
-    switches: int
-    ratio: Fraction
-    capacitor_utilisation: float
-    switch_utilisation: float
-    highest_capacitor_voltage: float
-    highest_blocking_voltage: float
-    output_evenness: float
-    families: tuple[str, ...]
-    clean: bool
-
-
-COLUMN_UNITS = {
-    "id": "",
-    "wiring": "",
-    "flying_capacitors": "",
-    "switches": "",
-    "ratio": "V/V",
-    "capacitor_utilisation": "1",
-    "switch_utilisation": "1",
-    "highest_capacitor_voltage": "V per V of input",
-    "highest_blocking_voltage": "V per V of input",
-    "output_evenness": "1",
-    "families": "",
-    "clean": "",
-}
-"""Columns of `list_converters` with their units."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -184,9 +122,9 @@ def find_converters(
             count_all += int(passing.sum())
             count += int((passing & measures.clean).sum())
         rows = np.flatnonzero(passing if include_unclean else passing & measures.clean)
-        groups.append(_Chosen(candidates, measures, rows))
+        groups.append(Chosen(candidates, measures, rows))
     if frontier_only:
-        groups = _unbeaten(groups)
+        groups = unbeaten(groups)
     return Listing(
         ratio=ratio,
         max_capacitors=capacitors,
@@ -194,7 +132,7 @@ def find_converters(
         count=count,
         count_all=count_all,
         total=sum(len(group.rows) for group in groups),
-        converters=tuple(_listed(_best(groups, limit), ratio, in_families)),
+        converters=ordered(groups, ratio, in_families.names, limit),
         nearest=() if any(len(c.measures) for c in found) else nearest_attainable(ratio, reach),
         capacitors_needed=capacitors_needed(ratio),
     )
@@ -289,104 +227,3 @@ class _InFamilies:
         same = np.array([one in wanted for one in candidates.table(rows).ids()], dtype=bool)
         alike[rows[~same]] = False
         return alike
-
-
-@dataclass(frozen=True, slots=True)
-class _Chosen:
-    """Rows of candidates that are to be listed."""
-
-    candidates: Candidates
-    measures: Measures
-    rows: NDArray[np.intp]
-
-    def narrowed(self, kept: NDArray[np.bool_] | NDArray[np.intp]) -> _Chosen:
-        return _Chosen(self.candidates, self.measures, self.rows[kept])
-
-    @property
-    def product(self) -> NDArray[np.float64]:
-        """Both utilisations multiplied, rounded so that equal products tie."""
-        measures = self.measures
-        both = measures.capacitor_utilisation[self.rows] * measures.switch_utilisation[self.rows]
-        return np.asarray(np.round(both, _DIGITS_THAT_TIE))
-
-
-def _unbeaten(groups: Sequence[_Chosen]) -> list[_Chosen]:
-    costs = [
-        np.stack(
-            [
-                np.full(len(g.rows), float(g.measures.flying_capacitors)),
-                g.measures.switches[g.rows].astype(np.float64),
-                -g.measures.capacitor_utilisation[g.rows],
-                -g.measures.switch_utilisation[g.rows],
-                g.measures.highest_blocking_voltage[g.rows],
-            ],
-            axis=1,
-        )
-        for g in groups
-    ]
-    marked = frontier(np.concatenate(costs))
-    ends = np.cumsum([len(g.rows) for g in groups])[:-1]
-    return [g.narrowed(mask) for g, mask in zip(groups, np.split(marked, ends), strict=True)]
-
-
-@dataclass(frozen=True, slots=True)
-class _Ranked:
-    """Chosen converters in order: group and row within it, canonical tables per group, ids."""
-
-    groups: Sequence[_Chosen]
-    tables: Sequence[ConverterTable]
-    ids: Sequence[str]
-    group: Sequence[int]
-    row: Sequence[int]
-
-
-def _best(groups: Sequence[_Chosen], limit: int | None) -> _Ranked:
-    """Order candidates, and work out the wirings of the best."""
-    if limit is not None and sum(len(g.rows) for g in groups) > limit:
-        # Nothing below the last product that can be shown is worked out; ties are decided by the id.
-        product = np.concatenate([g.product for g in groups])
-        least = -np.partition(-product, limit - 1)[limit - 1] if limit else np.inf
-        groups = [g.narrowed(g.product >= least) for g in groups]
-    tables = [g.candidates.table(g.rows) for g in groups]
-    ids = [one for table in tables for one in table.ids()]
-    sizes = [len(g.rows) for g in groups]
-    keys = [
-        np.concatenate(parts)
-        for parts in (
-            [-g.measures.capacitor_utilisation[g.rows] for g in groups],
-            [g.measures.switches[g.rows] for g in groups],
-            [np.full(len(g.rows), g.measures.flying_capacitors) for g in groups],
-            [-g.product for g in groups],
-        )
-    ]
-    order = np.lexsort((np.array(ids, dtype=np.str_), *keys))[:limit]
-    group = np.repeat(np.arange(len(groups)), sizes)
-    row = np.concatenate([np.arange(size) for size in sizes])
-    return _Ranked(
-        groups, tables, [ids[k] for k in order.tolist()], group[order].tolist(), row[order].tolist()
-    )
-
-
-def _listed(ranked: _Ranked, ratio: Fraction, in_families: _InFamilies) -> list[Listed]:
-    found = []
-    codes = [table.codes() for table in ranked.tables]
-    for group, row, one in zip(ranked.group, ranked.row, ranked.ids, strict=True):
-        measures = ranked.groups[group].measures
-        k = int(ranked.groups[group].rows[row])
-        found.append(
-            Listed(
-                id=one,
-                wiring=codes[group][row],
-                flying_capacitors=measures.flying_capacitors,
-                switches=int(measures.switches[k]),
-                ratio=ratio,
-                capacitor_utilisation=float(measures.capacitor_utilisation[k]),
-                switch_utilisation=float(measures.switch_utilisation[k]),
-                highest_capacitor_voltage=float(measures.highest_capacitor_voltage[k]),
-                highest_blocking_voltage=float(measures.highest_blocking_voltage[k]),
-                output_evenness=float(measures.output_evenness[k]),
-                families=in_families.names.get(one, ()),
-                clean=bool(measures.clean[k]),
-            )
-        )
-    return found

@@ -16,7 +16,7 @@ import numpy as np
 from capmuster.enumerate.census import check_reach
 from capmuster.enumerate.skeletons import skeletons
 from capmuster.enumerate.store import StoreError, open_census, write_census
-from capmuster.enumerate.tally import Tally, triple_of
+from capmuster.enumerate.tally import Tally, triple_numbers
 from capmuster.enumerate.threads import one_thread
 from capmuster.rank._version import __version__
 from capmuster.rank.cellscores import CellScores, concatenate, score_cells
@@ -254,18 +254,13 @@ def _in_memory(n: int, say: Callable[[Note], None]) -> _MemorySource:
 
 def _grouped(cells: CellScores) -> list[_Group]:
     """Group cells by triple, clean ones in front, else in their order."""
-    span = 1 << 8
-    code = (cells.charge_b.astype(np.int32) + span // 2) * span + cells.charge_c + span // 2
-    codes, which = np.unique(code, return_inverse=True)
-    triples = [triple_of(code // span - span // 2, code % span - span // 2) for code in codes.tolist()]
-    names = sorted(set(triples))
-    number = np.array([names.index(triple) for triple in triples], dtype=np.int16)[which]
-    order = np.argsort(2 * number + ~cells.clean, kind="stable")
-    ends = np.cumsum(np.bincount(number, minlength=len(names)))
-    clean = np.bincount(number[cells.clean], minlength=len(names))
+    triples, place = triple_numbers(cells.charge_b, cells.charge_c)
+    order = np.argsort((2 * place + ~cells.clean).astype(np.int16), kind="stable")
+    ends = np.cumsum(np.bincount(place, minlength=len(triples)))
+    clean = np.bincount(place[cells.clean], minlength=len(triples))
     return [
         _Group(triple, rows, int(front))
-        for triple, rows, front in zip(names, np.split(order, ends[:-1]), clean, strict=True)
+        for triple, rows, front in zip(triples, np.split(order, ends[:-1]), clean, strict=True)
     ]
 
 

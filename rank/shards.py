@@ -6,10 +6,12 @@ return is taken in their own order, so the result never depends on how the work 
 
 from __future__ import annotations
 
+from contextlib import contextmanager
 from dataclasses import dataclass
 from functools import partial
 from typing import TYPE_CHECKING, TypeVar
 
+from capmuster.enumerate.errors import CapmusterError
 from capmuster.enumerate.skeletons import skeletons
 from capmuster.enumerate.threads import one_thread
 from capmuster.rank.scoredcensus import Note
@@ -21,6 +23,7 @@ if TYPE_CHECKING:
 
 _T = TypeVar("_T")
 _SKELETONS_PER_SHARD = 512
+_PATIENCE = 10  # [s] for a scheduler to answer
 
 
 @dataclass(frozen=True, slots=True)
@@ -77,7 +80,7 @@ def run_shards(
     skip
         Shards that are left out.
     """
-    from joblib import Parallel, delayed  # noqa: PLC0415 -- only where work is split
+    from joblib import Parallel, delayed  # type: ignore[import-untyped]  # noqa: PLC0415 -- slow to import
 
     every = shards(n)
     done = len(skip)
@@ -90,6 +93,36 @@ def run_shards(
         done += 1
         say(Note(text, done, len(every)))
         yield result
+
+
+@contextmanager
+def spread(scheduler: str | None) -> Iterator[None]:
+    """Let shards run on the Dask cluster of a scheduler; without one, on this machine.
+
+    Raises
+    ------
+    CapmusterError
+        When Dask is not installed, or nothing answers at the address.
+    """
+    if scheduler is None:
+        yield
+        return
+    from joblib import parallel_config  # noqa: PLC0415 -- slow to import
+
+    try:
+        from distributed import Client  # noqa: PLC0415 -- an optional extra
+    except ImportError:
+        raise CapmusterError(
+            f"scheduler: '{scheduler}' needs Dask", accepted="an installation with capmuster[cluster]"
+        ) from None
+    try:
+        client = Client(scheduler, timeout=_PATIENCE)  # type: ignore[no-untyped-call]
+    except (OSError, ValueError) as error:
+        raise CapmusterError(
+            f"scheduler: nothing answers at '{scheduler}'", accepted="an address such as tcp://10.0.0.5:8786"
+        ) from error
+    with client, parallel_config(backend="dask"):
+        yield
 
 
 def _alone(task: Callable[[Shard], _T], shard: Shard) -> tuple[int, _T]:

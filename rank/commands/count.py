@@ -31,7 +31,6 @@ def command(capacitors: int, jobs: int, form: str) -> None:
     Up to six capacitors; six are some four hundred million cells, listed in passing and not kept.
     """
     from capmuster.rank.counting import count_census  # noqa: PLC0415 -- nothing heavy before it is needed
-
     from capmuster.rank.progress import told  # noqa: PLC0415
 
     with told() as say:

@@ -7,7 +7,8 @@ from typing import TYPE_CHECKING
 import click
 
 if TYPE_CHECKING:
-    from capmuster.rank.listing import Listed, Listing
+    from capmuster.rank.listed import Listed
+    from capmuster.rank.listing import Listing
 
 _SHOWN = 25
 
