@@ -14,6 +14,7 @@ if TYPE_CHECKING:
 Json: TypeAlias = "str | int | float | bool | Sequence[Json] | Mapping[str, Json] | None"
 
 _GAP = 2
+_SMALL, _LARGE = "mµnpf", "kMG"
 
 
 def text_table(
@@ -70,6 +71,14 @@ def _group_line(widths: Sequence[int], groups: Sequence[tuple[int, int, str]]) -
         room = sum(widths[first : last + 1]) + _GAP * (last - first)
         line = line.ljust(start) + text.center(room)
     return line.rstrip()
+
+
+def prefixed(values: Sequence[float]) -> tuple[str, list[str]]:
+    """Write one column of figures with the SI prefix of its smallest one; return prefix and figures."""
+    least = min((abs(value) for value in values if value and math.isfinite(value)), default=1.0)
+    power = min(max(math.floor(math.log10(least) / 3), -len(_SMALL)), len(_LARGE))
+    prefix = "" if power == 0 else _SMALL[-power - 1] if power < 0 else _LARGE[power - 1]
+    return prefix, figures([value / 1000.0**power for value in values])
 
 
 def figures(values: Sequence[float]) -> list[str]:

@@ -52,6 +52,7 @@ _GROUPS = (
     ("efficiency_minimum", "efficiency_maximum", "efficiency [%] at V_in"),
     ("ceiling_minimum", "ceiling_maximum", "ceiling [%] at V_in"),
 )
+_PREFIXED = {"W": "W", "Hz": "Hz", "ohm": "Ω", "W/mm2": "W/mm²", "S/mm2": "S/mm²"}
 _FLUSH_LEFT = {"id", "families", "pareto"}
 _FAMILIES_WIDTH = 24
 _LEGEND = (
@@ -135,9 +136,9 @@ def _shown(brief: Brief) -> dict[str, str]:
 
 def _table(found: Shortlist) -> str:
     from capmuster.rank.export_text import cell  # noqa: PLC0415
-    from capmuster.rank.rows import figures, text_table  # noqa: PLC0415
+    from capmuster.rank.rows import figures, prefixed, text_table  # noqa: PLC0415
 
-    shown = _shown(found.brief)
+    shown = dict(_shown(found.brief))
     names = list(shown)
     column_of = {column.name: column for column in found.columns}
     cells = []
@@ -146,7 +147,10 @@ def _table(found: Shortlist) -> str:
         if name == "families":
             cells.append([textwrap.fill(text, _FAMILIES_WIDTH, break_on_hyphens=False) for text in values])
         elif isinstance(values[0], float) and column_of[name].unit != "1":
-            cells.append(figures(values))
+            unit = _PREFIXED.get(column_of[name].unit, "")
+            prefix, texts = prefixed(values) if unit else ("", figures(values))
+            shown[name] = shown[name].replace(f"[{unit}]", f"[{prefix}{unit}]")
+            cells.append(texts)
         else:
             cells.append([cell(column_of[name], value) for value in values])
     return text_table(
