@@ -16,6 +16,7 @@ if TYPE_CHECKING:
     from collections.abc import Sequence
 
 _COMMANDS = ("list", "show", "draw", "rank", "export", "parts", "count", "survey")
+_FAILED = 1
 _BAD_INPUT = 2
 _INTERRUPTED = 130
 
@@ -59,7 +60,7 @@ def group(context: click.Context) -> None:
 
 
 def main(arguments: Sequence[str] | None = None) -> None:
-    """Run the command line; exit status 2 on bad input, 130 when interrupted."""
+    """Run the command line; exit status 2 on bad input, 130 when interrupted, 1 when output fails."""
     try:
         status = group.main(args=arguments, prog_name="capmuster", standalone_mode=False)
         sys.stdout.flush()
@@ -78,7 +79,15 @@ def main(arguments: Sequence[str] | None = None) -> None:
         click.echo("capmuster: interrupted", err=True)
         status = _INTERRUPTED
     except BrokenPipeError:
-        # The reader of a pipe has seen enough; keep Python from complaining while it shuts down.
-        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        _drop_output()  # the reader of a pipe has seen enough
         status = 0
+    except OSError as error:
+        click.echo(f"capmuster: {error.strerror or error}", err=True)
+        _drop_output()
+        status = _FAILED
     sys.exit(status if isinstance(status, int) else 0)
+
+
+def _drop_output() -> None:
+    """Keep Python from trying again, and complaining, while it shuts down."""
+    os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
