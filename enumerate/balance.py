@@ -152,8 +152,7 @@ def _back_substituted(
             vector = [factor * value for value in vector]
             rest *= factor
         vector[column] = -rest // pivot
-    sign = 1 if vector[free] > 0 else -1
-    divisor = sign * gcd(*vector)
+    divisor = gcd(*vector)
     return [value // divisor for value in vector]
 
 
