@@ -25,7 +25,8 @@ from capmuster.rank.page.plots import SHADES, impedance_plot, loss_plot, populat
 from capmuster.rank.page.population import population_of
 from capmuster.rank.page.render import render_page
 from capmuster.rank.page.shortlisted import page_data
-from capmuster.rank.shortlist import COLUMNS, shortlist
+from capmuster.rank.page.tablecells import page_table
+from capmuster.rank.shortlist import shortlist
 from capmuster.rank.utilisation import charge_flow
 
 MEGABYTE = 1_000_000
@@ -72,7 +73,7 @@ def test_nothing_is_fetched(page):
     assert "unsafe-inline" not in policy.split("script-src")[1]
     style = page.split("<style>")[1].split("</style>")[0]
     assert "@import" not in style
-    assert set(re.findall(r"url\((.*?)\)", style)) <= {"#hatch"}
+    assert all(url.startswith("#") for url in re.findall(r"url\((.*?)\)", style))
 
 
 def test_text_that_looks_like_markup_is_text(page):
@@ -126,7 +127,7 @@ def test_page_of_a_shipped_brief(tmp_path):
     assert [cell.text for cell in data.candidates[0].cells][:2] == ["1", found.frame.id[0]]
     for candidate, area in zip(data.candidates, found.frame.area_mm2, strict=True):
         assert candidate.area == area
-        assert len(candidate.cells) == len(COLUMNS)
+        assert len(candidate.cells) == len(found.columns)
     assert data.cautions == tuple(found.cautions)
     assert data.cautions  # 56 V in a wet place
     assert len(data.others) == len(found.pool) - 50
@@ -154,6 +155,38 @@ def test_losses_are_input_power_less_output_power():
         strict=True,
     ):
         assert bar.total == pytest.approx((ratio * volts - brief.required) * brief.current, rel=1e-9)
+
+
+def test_all_losses_add_up_to_input_power_less_output_power():
+    # Energy balance: efficiency is output power over output power and all losses.
+    found = shortlist(load_brief("greenhouse-node-losses"), top=3)
+    for row, candidate in enumerate(page_data(found).candidates):
+        sized = found.pool.evaluation.sized
+        for bar, at in zip(candidate.losses, (sized.minimum, sized.nominal, sized.maximum), strict=True):
+            power_out = at.output_power[row]
+            assert bar.total == pytest.approx(power_out / at.efficiency[row] - power_out, rel=1e-9)
+        names = [name for name, _ in candidate.losses[0].terms]
+        assert {"gate drive", "plates", "leakage"} <= set(names)
+        assert len(names) == len(set(names))
+
+
+def test_cells_are_the_frame_in_the_units_of_the_headings():
+    found = shortlist(load_brief("greenhouse-node-losses"), top=5)
+    table = page_table(found.columns, found.frame)
+    factors = {"%": 0.01, "mW": 1e-3, "µW": 1e-6, "MHz": 1e6, "kHz": 1e3, "mA": 1e-3, "Ω": 1.0, "kΩ": 1e3}
+    seen = set()
+    for k, column in enumerate(table.columns):
+        for value, cells in zip(found.frame[column.key], table.rows, strict=True):
+            cell = cells[k]
+            if isinstance(value, float) and math.isfinite(value):
+                factor = factors.get(column.unit, 1.0)
+                seen.add(column.unit)
+                assert cell.value * factor == pytest.approx(value, rel=1e-9), column.key
+                written = float(cell.text)
+                assert written == pytest.approx(cell.value, rel=6e-4, abs=0.06 if column.unit == "%" else 0)
+    assert {"%", "mW", "MHz", "mA"} <= seen
+    # One prefix for each unit, so that columns compare.
+    assert len({column.unit for column in table.columns if column.unit.endswith("W")}) == 1
 
 
 def test_impedance_curve_of_a_shipped_brief():

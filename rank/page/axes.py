@@ -7,6 +7,7 @@ from dataclasses import dataclass
 
 _PREFIXES = {-15: "f", -12: "p", -9: "n", -6: "µ", -3: "m", 0: "", 3: "k", 6: "M", 9: "G", 12: "T"}
 _MOST_LOG_TICKS = 7
+_NEARLY_ONE = 0.005
 
 
 @dataclass(frozen=True, slots=True)
@@ -42,9 +43,9 @@ class Axis:
 
 
 def linear_axis(low: float, high: float, start: float, end: float, most_ticks: int = 7) -> Axis:
-    """Fit a linear axis around values, with ticks at its ends; a single value gets room on both sides."""
-    if high - low <= 1e-9 * max(abs(low), abs(high)):
-        margin = 0.02 * abs(low) or 1.0
+    """Fit a linear axis around values, with ticks at its ends; values that are nearly one get room around."""
+    if high - low <= _NEARLY_ONE * max(abs(low), abs(high)):
+        margin = 0.02 * max(abs(low), abs(high)) or 1.0
         low, high = low - margin, high + margin
     step = _round_step((high - low) / (most_ticks - 1))
     first, last = math.floor(low / step + 1e-9), math.ceil(high / step - 1e-9)

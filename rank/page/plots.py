@@ -27,8 +27,8 @@ SHADES = (1, 3, 10, 30, 100, 300, 1000)
 
 _TYPE = 11.0
 _RADIUS = 4.5
-_LOOKS = 8  # fills that tell terms apart, in the style sheet
-_OTHERS_REACH = 2.0
+_LOOKS = 12  # fills that tell terms apart, in the style sheet
+_OTHERS_REACH, _OTHERS_BELOW = 2.0, 10.0  # factor of area, points of efficiency
 _WIDE_RANGE = 8.0  # above this factor between largest and smallest, an axis is logarithmic
 
 
@@ -37,11 +37,14 @@ def area_efficiency_plot(
 ) -> str:
     """Plot efficiency over area: a link per candidate, the Pareto set filled and numbered.
 
-    Others are dots as far as twice the largest area of the table: beyond, they would crowd out its points.
+    Others are dots as far as twice the largest area of the table and 10 points below its least efficiency:
+    beyond, they would crowd out its points.
     """
     areas = [one.area for one in candidates]
     percent = [100.0 * one.efficiency for one in candidates]
-    near = others[others[:, 0] <= _OTHERS_REACH * max(areas)]
+    near = others[
+        (others[:, 0] <= _OTHERS_REACH * max(areas)) & (100.0 * others[:, 1] >= min(percent) - _OTHERS_BELOW)
+    ]
     all_areas = [*areas, *near[:, 0].tolist()]
     all_percent = [*percent, *(100.0 * near[:, 1]).tolist()]
     left, right, top, bottom = 52.0, 500.0, 26.0, 330.0
@@ -50,7 +53,7 @@ def area_efficiency_plot(
     else:
         x = linear_axis(min(all_areas), max(all_areas), left, right)
     margin = 0.04 * (max(all_percent) - min(all_percent))  # points clear of the frame
-    y = linear_axis(min(all_percent) - margin, min(100.0, max(all_percent) + margin), bottom, top)
+    y = linear_axis(max(0.0, min(all_percent) - margin), min(100.0, max(all_percent) + margin), bottom, top)
     parts = [_open(520.0, 368.0, "Efficiency over area")]
     parts += _frame(x, y, ("area [mm²]", f"{efficiency_label} [%]"))
     dots = sorted({(round(x(a)), round(y(100.0 * share))) for a, share in near.tolist()})
@@ -108,7 +111,8 @@ def loss_plot(bars: Sequence[LossBar]) -> str:
     most = max(bar.total for bar in bars)
     x = linear_axis(0.0, most if most > 0 else 1.0, margin, 420.0, 5)
     height = 8.0 + 26.0 * len(bars)
-    parts = [_open(480.0, height + 40.0 + 18.0 * len(terms), "Losses by term")]
+    rows = (len(terms) + 1) // 2
+    parts = [_open(480.0, height + 40.0 + 18.0 * rows, "Losses by term")]
     parts.append(_path("grid", "".join(f"M{number(x(v))} 4V{number(height)}" for v in x.ticks)))
     for k, bar in enumerate(bars):
         y, at = 8.0 + 26.0 * k, 0.0
@@ -120,9 +124,9 @@ def loss_plot(bars: Sequence[LossBar]) -> str:
         parts.append(_text(x(at) + 5.0, y + 13.0, engineering(at, "W")))
     parts += [_text(x(value), height + 13.0, engineering(value, "W"), "middle") for value in x.ticks]
     for t, name in enumerate(terms):
-        y = height + 26.0 + 18.0 * t
-        parts.append(_path(f"term t{t % _LOOKS}", f"M{number(margin)} {number(y)}h14v12h-14z"))
-        parts.append(_text(margin + 21.0, y + 10.0, name))
+        left, y = margin + 175.0 * (t // rows), height + 26.0 + 18.0 * (t % rows)
+        parts.append(_path(f"term t{t % _LOOKS}", f"M{number(left)} {number(y)}h14v12h-14z"))
+        parts.append(_text(left + 21.0, y + 10.0, name))
     return "".join([*parts, "</svg>"])
 
 
