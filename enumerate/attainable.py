@@ -1,13 +1,20 @@
 """Which ratios some number of flying capacitors reaches.
 
 Makowski and Maksimovic, "Performance limits of switched-capacitor DC-DC converters", IEEE PESC 1995: with n
-flying capacitors the positive ratios are P/Q with P and Q from 1 to the Fibonacci number F(n + 1) of
-1, 2, 3, 5, 8, ... The census adds that the inverting ones are -P/Q with P + Q up to the same number.
+flying capacitors the positive ratios P/Q with P and Q from 1 to the Fibonacci number F(n + 1) of 1, 2, 3, 5,
+8, ... can be reached. With the ports' roles exchanged that is -P/Q with P + Q up to the same number.
+Complete enumeration finds exactly these up to n = 5; for n = 6 it finds three triples of port charges more (`BEYOND`), so that from there on
+the number is only known to be enough.
 """
 
 from __future__ import annotations
 
 from fractions import Fraction
+
+ENUMERATED = 6
+"""Most flying capacitors whose ratios are known by complete enumeration."""
+BEYOND = ((5, 19, 24), (7, 17, 24), (11, 13, 24))
+"""Triples of port charges that six flying capacitors reach although the largest is above F(7) = 21."""
 
 
 def fibonacci_bound(n: int) -> int:
@@ -19,10 +26,9 @@ def fibonacci_bound(n: int) -> int:
 
 
 def capacitors_needed(ratio: Fraction) -> int:
-    """Least number of flying capacitors that reaches a ratio other than 0."""
-    reach = _reach_needed(ratio)
+    """Least number of flying capacitors that is known to reach a ratio other than 0; exact up to `ENUMERATED`."""
     n = 1
-    while fibonacci_bound(n) < reach:
+    while not _reached(ratio, n):
         n += 1
     return n
 
@@ -37,24 +43,28 @@ def nearest_attainable(ratio: Fraction, n: int) -> tuple[Fraction, ...]:
     n
         Most flying capacitors, at least 1.
     """
-    bound = fibonacci_bound(n)
-    if _reach_needed(ratio) <= bound:
+    if _reached(ratio, n):
         return (ratio,)
     wanted = abs(ratio)
-    below, above = None, None
+    bound = fibonacci_bound(n)
+    candidates: set[Fraction] = set()
     for q in range(1, bound + 1):
         most = bound if ratio > 0 else bound - q
         p = min(int(wanted * q), most)
-        if p >= 1 and (below is None or Fraction(p, q) > below):
-            below = Fraction(p, q)
-        if p + 1 <= most and (above is None or Fraction(p + 1, q) < above):
-            above = Fraction(p + 1, q)
+        candidates |= {Fraction(k, q) for k in (p, p + 1) if 1 <= k <= most}
+    if n >= ENUMERATED:
+        for a, b, c in BEYOND:
+            pairs = ((a, c), (b, c)) if ratio > 0 else ((a, b),)
+            candidates |= {Fraction(p, q) for pair in pairs for p, q in (pair, pair[::-1])}
+    sides = ([c for c in candidates if c < wanted], [c for c in candidates if c > wanted])
+    found = [side for side in (max(sides[0], default=None), min(sides[1], default=None)) if side is not None]
     sign = 1 if ratio > 0 else -1
-    found = [value for value in (below, above) if value is not None]
     return tuple(sign * value for value in sorted(found, key=lambda value: (abs(value - wanted), value)))
 
 
-def _reach_needed(ratio: Fraction) -> int:
-    if ratio > 0:
-        return max(ratio.numerator, ratio.denominator)
-    return ratio.denominator - ratio.numerator
+def _reached(ratio: Fraction, n: int) -> bool:
+    p, q = abs(ratio.numerator), ratio.denominator
+    if (max(p, q) if ratio > 0 else p + q) <= fibonacci_bound(n):
+        return True
+    other = abs(p - q) if ratio > 0 else p + q
+    return n >= ENUMERATED and tuple(sorted((p, q, other))) in BEYOND

@@ -54,7 +54,7 @@ class Listing:
     nearest
         Where nothing reaches the ratio: the attainable ratios next to it.
     capacitors_needed
-        Least number of flying capacitors that reaches the ratio.
+        Least number of flying capacitors that is known to reach the ratio.
     """
 
     ratio: Fraction

@@ -246,10 +246,13 @@ def _summary(listing: Listing) -> str:
 
 
 def _out_of_reach(listing: Listing) -> str:
+    from capmuster.enumerate.attainable import ENUMERATED  # noqa: PLC0415
+
     nearest = " and ".join(str(ratio) for ratio in listing.nearest)
+    known = "" if listing.capacitors_needed <= ENUMERATED else "at most "
     needed = _counted(listing.capacitors_needed, "flying capacitor")
     return (
-        f"0 converters: ratio {listing.ratio} takes {needed}; "
+        f"0 converters: ratio {listing.ratio} takes {known}{needed}; "
         f"nearest with at most {listing.complete_up_to}: {nearest}."
     )
 
