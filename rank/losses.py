@@ -130,11 +130,9 @@ def loss_model(
     )
     present = switches.phase > 0
     switch = switch_coefficients(technology, elements.switch_choice, switches.charges / output, blocked)
-    idle = present & (switches.charges == 0)
-    energy = np.where(idle, (switch.gate + switch.output_charge) * elements.switch_choice.cost, 0.0).sum(
-        axis=1
-    )
-    standing = np.where(idle, switch.leakage * elements.switch_choice.cost, 0.0).sum(axis=1)
+    idle_area = np.where(present & (switches.charges == 0), elements.switch_choice.cost, 0.0)
+    energy = ((switch.gate + switch.output_charge) * idle_area).sum(axis=1)
+    standing = (switch.leakage * idle_area).sum(axis=1)
     return LossModel.build(
         capacitor.slow,
         np.where(present, switch.fast, 0.0),

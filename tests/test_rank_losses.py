@@ -188,14 +188,14 @@ def test_no_term_is_counted_twice():
         ("plate", "plate"),
         ("gate", "gate"),
         ("output_charge", "output_charge"),
-        ("controller",) * 2,
+        ("controller", "controller"),
     ):
         alone = losses(replace(model, **{k: v for k, v in zero.items() if k != name}), A, S, f)
         assert alone.fixed[0] == pytest.approx(float(getattr(whole, term)[0]), rel=1e-12)
 
 
 def test_efficiency_is_output_over_input_power_of_the_steady_state():
-    # V_out I / (V_in I_in) of the switch-level circuit, in the slow limit where the blend is exact, plates included.
+    # V_out I / (V_in I_in) of the switch-level circuit, in the slow limit where the blend is exact.
     one, _, A, S, f = sized(CONVERTERS[5], np.random.default_rng(2), slow_to_fast=300.0)
     bare = replace(PLAIN, controller_power=0.0, wiring_resistance=0.0)
     bare = replace(
