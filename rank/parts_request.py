@@ -59,7 +59,7 @@ class PartsRequest:
     driver_footprint, driver_price
         What each switch takes beside its parts [mm2], [EUR]: one gate driver drives the parts in parallel.
     frequencies
-        Switching frequencies to choose from [Hz]; empty for the brief's alone.
+        Switching frequencies to choose from [Hz]; empty for the brief's, or five over its range.
 
     Raises
     ------

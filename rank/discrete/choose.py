@@ -13,7 +13,7 @@ from typing import TYPE_CHECKING, Final
 from capmuster.enumerate.errors import CapmusterError
 from capmuster.rank.discrete.blends import QUADRATIC
 from capmuster.rank.discrete.certify import certify
-from capmuster.rank.discrete.design import condition, fill
+from capmuster.rank.discrete.design import condition, exact_impedance, fill
 from capmuster.rank.discrete.finalists import Finalist, PartsShortlist
 from capmuster.rank.discrete.labels import search
 from capmuster.rank.discrete.options import NoPartError, OptionBook, Units
@@ -123,7 +123,7 @@ def choose_parts(
     pool = gather(brief, include)
     wanted = {one.id for one in include}
     places = [k for k in range(len(pool)) if k < screened or str(pool.ids[k]) in wanted]
-    books = _books(brief, request)
+    books = _books(request)
     left_out: Counter[str] = Counter()
     entrants = []
     for k in places:
@@ -158,17 +158,14 @@ def choose_parts(
     )
 
 
-def _books(brief: Brief, request: PartsRequest) -> tuple[OptionBook, ...]:
+def _books(request: PartsRequest) -> tuple[OptionBook, ...]:
     """One book for each frequency, shared by all candidates."""
     units = Units.of(request)
     counts = (
         request.footprint is not None or request.least == "footprint",
         request.price is not None or request.least == "price",
     )
-    return tuple(
-        OptionBook(request, units, frequency, counts)
-        for frequency in request.frequencies or (brief.frequency,)
-    )
+    return tuple(OptionBook(request, units, frequency, counts) for frequency in request.frequencies)
 
 
 def _cases(
@@ -211,7 +208,8 @@ def _finished(found: _Found, brief: Brief, blend: Blend) -> Finalist:
                 case, best = other, outcome
     assert best.selection is not None  # noqa: S101 -- only candidates with a choice are finalists
     objective = case.reported(best.objective)
-    fillings = fill(case.slots, case.problem, best.selection, case.book.request)
+    book = case.book
+    fillings = fill(case.slots, case.problem, best.selection, book)
     ratio = float(case.converter.ratio)
 
     def at(volts: float) -> Condition:
@@ -219,18 +217,26 @@ def _finished(found: _Found, brief: Brief, blend: Blend) -> Finalist:
             fillings,
             ratio,
             brief,
-            request=case.book.request,
-            frequency=case.book.frequency,
+            request=book.request,
+            frequency=book.frequency,
             input_voltage=volts,
             blend=blend,
         )
 
     return Finalist(
         converter=case.converter,
-        area_place=case.place,
-        frequency=case.book.frequency,
+        pool_place=case.place,
+        frequency=book.frequency,
         fillings=fillings,
         operating=at(operating_input(brief)),
+        exact_impedance=exact_impedance(
+            case.converter,
+            fillings,
+            brief,
+            request=book.request,
+            frequency=book.frequency,
+            input_voltage=operating_input(brief),
+        ),
         conditions=(at(brief.input_minimum), at(brief.input_nominal), at(brief.input_maximum)),
         objective=objective,
         bound=min(objective, *(other.reported(outcome.bound) for other, outcome in proofs)),

@@ -7,19 +7,24 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass, fields
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Final
 
+from capmuster.rank.discrete.problem import fast_factor
 from capmuster.rank.parts import CapacitorPart
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
 
+    from capmuster.enumerate.wiring import Converter
     from capmuster.rank.brief import Brief
     from capmuster.rank.discrete.blends import Blend
+    from capmuster.rank.discrete.options import OptionBook
     from capmuster.rank.discrete.problem import Problem, Selection
     from capmuster.rank.discrete.slots import Slot
     from capmuster.rank.parts import SwitchPart
     from capmuster.rank.parts_request import PartsRequest
+
+_HALF: Final = 0.5
 
 
 @dataclass(frozen=True, slots=True)
@@ -136,7 +141,7 @@ class Condition:
 
 
 def fill(
-    slots: Sequence[Slot], problem: Problem, selection: Selection, request: PartsRequest
+    slots: Sequence[Slot], problem: Problem, selection: Selection, book: OptionBook
 ) -> tuple[Filling, ...]:
     """Put the parts of a choice into their places.
 
@@ -148,9 +153,10 @@ def fill(
         Its problem.
     selection
         The choice; alike elements take its options in the order of their names.
-    request
-        The resolved request that the problem was posed for.
+    book
+        The book that the problem was posed with.
     """
+    request, units = book.request, book.units
     place = {slot.name: slot for slot in slots}
     found: dict[str, Filling] = {}
     for group, options in zip(problem.groups, selection, strict=True):
@@ -160,15 +166,14 @@ def fill(
             capacitor = slot.kind == "capacitor"
             part = (request.stock.capacitors if capacitor else request.stock.switches)[int(o.part[k])]
             derating = request.capacitor_derating if capacitor else request.switch_derating
-            number = series * parallel
             found[name] = Filling(
                 slot=slot,
                 part=part,
                 series=series,
                 parallel=parallel,
                 rating=series * part.rating * (derating or 1.0),
-                footprint=number * part.footprint + (0.0 if capacitor else request.driver_footprint),
-                price=number * part.price + (0.0 if capacitor else request.driver_price),
+                footprint=int(o.footprint[k]) / units.per_mm2,
+                price=int(o.price[k]) / units.per_eur,
             )
     return tuple(found[slot.name] for slot in slots)
 
@@ -208,9 +213,10 @@ def condition(
         squared, value = float(one.slot.multiplier) ** 2, one.value(request, input_voltage)
         if isinstance(one.part, CapacitorPart):
             slow += squared / (frequency * value)
-            series += 4 * squared * one.part.series_resistance * one.series / one.parallel
+            resistance = one.part.series_resistance * one.series / one.parallel
+            series += fast_factor(one.slot, brief) * squared * resistance
         else:
-            on += 2 * squared * value
+            on += fast_factor(one.slot, brief) * squared * value
             gate += frequency * one.number * one.part.gate_charge * one.part.drive
             each = float(one.slot.ideal) * input_voltage / one.series
             output_charge += frequency * one.number * float(one.part.output_charge_at(each)) * each
@@ -240,3 +246,38 @@ def condition(
         efficiency=reached * brief.current / (ideal * brief.current + losses.load_free),
         losses=losses,
     )
+
+
+def exact_impedance(
+    converter: Converter,
+    fillings: Sequence[Filling],
+    brief: Brief,
+    *,
+    request: PartsRequest,
+    frequency: float,
+    input_voltage: float,
+) -> float:
+    """Find the output impedance of a filled converter, wiring included, without any blend [ohm].
+
+    Parameters
+    ----------
+    converter
+        The converter.
+    fillings, brief, request, frequency, input_voltage
+        As in `condition`.
+    """
+    from capmuster.rank.circuit import circuit_of  # noqa: PLC0415 -- only for finalists
+    from capmuster.rank.impedance import output_impedance  # noqa: PLC0415
+
+    values = [one.value(request, input_voltage) for one in fillings]
+    series = [
+        one.part.series_resistance * one.series / one.parallel
+        for one in fillings
+        if isinstance(one.part, CapacitorPart)
+    ]
+    n = converter.n
+    circuit = circuit_of(
+        converter, values[:n], values[n:], series_resistances=series, duty=brief.duty or _HALF
+    )
+    exact = output_impedance(circuit, frequency)
+    return float(exact.resistance[0]) + brief.technology.wiring_resistance

@@ -22,14 +22,16 @@ class Finalist:
     ----------
     converter
         The converter.
-    area_place
-        Its place by area in continuous sizing, counted from 1.
+    pool_place
+        Its place among the brief's candidates in continuous sizing, counted from 1.
     frequency
         Switching frequency [Hz], the best of those asked for.
     fillings
         Its capacitors and switches with their parts.
     operating
         What it does at the input where losses count.
+    exact_impedance
+        Its output impedance there without any blend, wiring included [ohm].
     conditions
         What it does at the least, nominal and highest input.
     objective, bound, relaxed
@@ -40,10 +42,11 @@ class Finalist:
     """
 
     converter: Converter
-    area_place: int
+    pool_place: int
     frequency: float
     fillings: tuple[Filling, ...]
     operating: Condition
+    exact_impedance: float
     conditions: tuple[Condition, Condition, Condition]
     objective: float
     bound: float
@@ -124,7 +127,7 @@ class PartsShortlist:
         proven = all(one.proven for one in self.finalists)
         gap = max(one.gap for one in self.finalists)
         parts = (
-            f"The parts of every finalist are proven best, to a relative gap of {gap:.1e}"
+            f"The parts of every finalist are proven best{f', to a relative gap of {gap:.0e}' if gap else ''}"
             if proven
             else f"The parts of the finalists are within {gap:.1e} of the best; not all are proven best"
         )

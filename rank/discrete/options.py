@@ -7,7 +7,7 @@ budget is met or not, without rounding.
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass, field, fields
+from dataclasses import dataclass, field, fields, replace
 from fractions import Fraction
 from typing import TYPE_CHECKING, TypeAlias
 
@@ -48,7 +48,8 @@ class Options:
     value
         Capacitance [F] or on-resistance [ohm] of all of them.
     slow, fast
-        What they add to R_SSL and to R_FSL [ohm]; per squared multiplier in an `OptionBook`.
+        What they add to R_SSL and to R_FSL [ohm]. In an `OptionBook` for a multiplier of 1 and a duty of 1:
+        one over frequency times capacitance, and the resistance.
     gate, output
         Loss by gate drive and by output charge [W].
     footprint, price
@@ -79,11 +80,9 @@ class Options:
         """Return the ways at these places."""
         return Options(*(getattr(self, one.name)[rows] for one in fields(self)))
 
-    def scaled(self, squared_multiplier: float) -> Options:
-        """Return the ways with impedances for an element of this squared charge multiplier."""
-        kept = [getattr(self, one.name) for one in fields(self)]
-        kept[4], kept[5] = self.slow * squared_multiplier, self.fast * squared_multiplier
-        return Options(*kept)
+    def scaled(self, slow: float, fast: float) -> Options:
+        """Return the ways with both impedances multiplied."""
+        return replace(self, slow=self.slow * slow, fast=self.fast * fast)
 
 
 @dataclass(frozen=True, slots=True)
@@ -140,7 +139,7 @@ class OptionBook:
     _known: dict[tuple[str, float, float, bool], Options] = field(default_factory=dict, repr=False)
 
     def capacitor(self, voltage: float, bias: float, *, pruned: bool = True) -> Options:
-        """Ways to build a capacitor, for a multiplier of 1.
+        """Ways to build a capacitor.
 
         Parameters
         ----------
@@ -164,7 +163,7 @@ class OptionBook:
         return self._known[key]
 
     def switch(self, voltage: float, blocking: float, *, idle: bool = False, pruned: bool = True) -> Options:
-        """Ways to build a switch, for a multiplier of 1.
+        """Ways to build a switch.
 
         Parameters
         ----------
@@ -186,7 +185,7 @@ class OptionBook:
         if key not in self._known:
             found = self._switches(voltage, blocking)
             if idle:
-                found = found.scaled(0.0)
+                found = found.scaled(0.0, 0.0)
             self._known[key] = self._kept(found, "switch", voltage, pruned=pruned)
         return self._known[key]
 
@@ -212,7 +211,7 @@ class OptionBook:
             parallel=parallel,
             value=value,
             slow=slow,
-            fast=4 * resistance,  # (1/D1 + 1/D2) at 50 % duty
+            fast=resistance,
             gate=nothing,
             output=nothing,
             footprint=_whole([one.footprint for one in shelf], self.units.per_mm2)[part] * number,
@@ -244,7 +243,7 @@ class OptionBook:
             parallel=parallel,
             value=value,
             slow=np.zeros(len(part)),
-            fast=2 * value,  # 1/D at 50 % duty
+            fast=value,
             gate=gate,
             output=charge * each * number * self.frequency,
             footprint=footprint + _whole([request.driver_footprint], mm2),

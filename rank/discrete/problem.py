@@ -30,6 +30,9 @@ Selection: TypeAlias = tuple[tuple[int, ...], ...]
 SLACK: Final = 1e-9
 """Relative rounding that a limit on loss or impedance forgives."""
 
+_HALF: Final = 0.5
+_GRID: Final = 5  # frequencies to choose from where the brief gives a range
+
 
 @dataclass(frozen=True, slots=True)
 class Group:
@@ -146,6 +149,14 @@ class Problem:
         )
 
 
+def fast_factor(slot: Slot, brief: Brief) -> float:
+    """Return what resistance times squared multiplier counts for in R_FSL [1]; a free duty counts as 50 %."""
+    duty = brief.duty or _HALF
+    if slot.kind == "capacitor":
+        return 1 / duty + 1 / (1 - duty)
+    return 1 / duty if slot.phase == 1 else 1 / (1 - duty)
+
+
 def operating_input(brief: Brief) -> float:
     """Input voltage at which losses count [V].
 
@@ -156,13 +167,24 @@ def operating_input(brief: Brief) -> float:
 
 
 def resolved(request: PartsRequest, brief: Brief) -> PartsRequest:
-    """Fill in what a request leaves to the brief: deratings, the footprint budget, the target.
+    """Fill in what a request leaves to the brief: deratings, footprint budget, target, frequencies.
 
     Raises
     ------
     CapmusterError
         If what is asked for has no end: least loss without a budget, least footprint or price without target.
+        If the brief asks for interleaved copies: parts are chosen for one.
     """
+    if brief.copies > 1:
+        raise CapmusterError(
+            f"parts: the brief asks for {brief.copies} interleaved copies, and parts are chosen for one",
+            accepted="the brief of one copy, with its share of load and budgets",
+        )
+    frequencies = request.frequencies
+    if not frequencies:
+        lowest = brief.frequency_minimum or brief.frequency
+        grid = np.geomspace(lowest, brief.frequency, _GRID) if lowest < brief.frequency else [brief.frequency]
+        frequencies = tuple(float(f"{one:.3g}") for one in grid) if len(grid) > 1 else (brief.frequency,)
     technology = brief.technology
     footprint = request.footprint
     areas = [one for one in (brief.area, brief.silicon_area, brief.capacitor_area) if one is not None]
@@ -185,6 +207,7 @@ def resolved(request: PartsRequest, brief: Brief) -> PartsRequest:
         request,
         footprint=footprint,
         efficiency=efficiency,
+        frequencies=frequencies,
         capacitor_derating=request.capacitor_derating or technology.capacitor_derating,
         switch_derating=request.switch_derating or technology.switch_derating,
     )
@@ -222,17 +245,19 @@ def pose(
         If no part of the stock stands some voltage.
     """
     request, volts = book.request, operating_input(brief)
-    alike: dict[tuple[str, Fraction, Fraction, float], list[str]] = defaultdict(list)
+    alike: dict[tuple[str, Fraction, Fraction, float, float], list[str]] = defaultdict(list)
     for slot in slots:
-        alike[slot.kind, slot.multiplier, slot.ideal, slot.voltage].append(slot.name)
+        per_duty = fast_factor(slot, brief)
+        alike[slot.kind, slot.multiplier, slot.ideal, slot.voltage, per_duty].append(slot.name)
     groups = []
-    for (kind, multiplier, ideal, voltage), names in alike.items():
+    for (kind, multiplier, ideal, voltage, per_duty), names in alike.items():
         operating = float(ideal) * volts
         if kind == "capacitor":
             options = book.capacitor(voltage, operating, pruned=pruned)
         else:
             options = book.switch(voltage, operating, idle=not multiplier, pruned=pruned)
-        groups.append(Group(tuple(names), options.scaled(float(multiplier) ** 2)))
+        squared = float(multiplier) ** 2
+        groups.append(Group(tuple(names), options.scaled(squared, squared * per_duty)))
     held = brief.use == "regulated"
     ideal_power = abs(float(ratio)) * volts * brief.current
     overhead = brief.technology.controller_power
