@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import math
 from dataclasses import asdict
 from typing import TYPE_CHECKING
 
@@ -24,7 +25,13 @@ def to_csv(shortlist: Shortlist) -> bytes:
 
 def to_json(shortlist: Shortlist) -> bytes:
     """Everything: the job, the search, the table with its units, and each candidate's elements."""
-    rows = json.loads(shortlist.frame.to_json(orient="records", double_precision=15))
+    rows = [
+        {
+            str(name): None if isinstance(value, float) and math.isnan(value) else value
+            for name, value in row.items()
+        }
+        for row in shortlist.frame.to_dict("records")
+    ]
     for k, row in enumerate(rows):
         row["families"] = list(shortlist.families(k))
         row["elements"] = [{**asdict(element), "stress": element.stress} for element in shortlist.elements(k)]
