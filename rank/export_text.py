@@ -14,7 +14,7 @@ if TYPE_CHECKING:
     from capmuster.rank.elements import Element
     from capmuster.rank.shortlist import Column, Shortlist
 
-_UNITS = {"mm2": "mm²", "S/mm2": "S/mm²", "ohm": "Ω", "1": "%"}
+_UNITS = {"mm2": "mm²", "S/mm2": "S/mm²", "W/mm2": "W/mm²", "ohm": "Ω", "1": "%"}
 
 
 def to_csv(shortlist: Shortlist) -> bytes:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import datetime as dt
 import io
+import math
 from typing import TYPE_CHECKING
 
 from capmuster.rank.export_text import heading
@@ -14,14 +15,36 @@ if TYPE_CHECKING:
     from xlsxwriter.workbook import Workbook
     from xlsxwriter.worksheet import Worksheet
 
+    from capmuster.rank.elements import Element
     from capmuster.rank.shortlist import Shortlist
 
 _SHARES = {"capacitor_utilisation", "switch_utilisation", "output_evenness"}
 _WIDTHS = {"id": 14, "families": 24, "wiring": 48}
-_ELEMENT_HEADINGS = (
-    "place", "id", "element", "positive node", "negative node", "closed in phase", "class", "in series",
-    "area [mm²]", "value", "unit", "charge multiplier", "must stand [V]", "derated rating [V]", "stress [%]",
-)  # fmt: skip
+_SYMBOLS = {"mm2": "mm²", "S/mm2": "S/mm²", "W/mm2": "W/mm²", "ohm": "Ω"}
+_PLAIN = (1e-2, 1e5)  # figures that are read without an exponent
+_ELEMENT_COLUMNS = (
+    ("place", ""),
+    ("id", ""),
+    ("element", ""),
+    ("positive node", ""),
+    ("negative node", ""),
+    ("closed in phase", ""),
+    ("class", ""),
+    ("polarity", ""),
+    ("in series", ""),
+    ("area", "mm2"),
+    ("capacitance", "F"),
+    ("on-resistance", "ohm"),
+    ("charge multiplier", ""),
+    ("must stand", "V"),
+    ("derated rating", "V"),
+    ("stress", "1"),
+    ("source while on", "V"),
+    ("source while off", "V"),
+    ("gate while on", "V"),
+    ("gate while off", "V"),
+    ("gate supply", ""),
+)
 
 
 def to_workbook(shortlist: Shortlist) -> bytes:
@@ -49,31 +72,50 @@ def to_workbook(shortlist: Shortlist) -> bytes:
     return out.getvalue()
 
 
+class _Writer:
+    """Writes values into a sheet: text as text, numbers in formats that carry their unit, nothing for NaN."""
+
+    def __init__(self, book: Workbook, sheet: Worksheet) -> None:
+        self.book = book
+        self.sheet = sheet
+        self.formats: dict[str, Format] = {}
+
+    def write(self, row: int, column: int, value: object, unit: str = "") -> None:
+        """Write a value in the unit [`unit`] of its column."""
+        if isinstance(value, bool):
+            self.sheet.write_string(row, column, "yes" if value else "")
+        elif isinstance(value, int):
+            self.sheet.write_number(row, column, value, self._format("0"))
+        elif isinstance(value, float):
+            if math.isfinite(value):
+                self.sheet.write_number(row, column, value, self._format(_number_format(value, unit)))
+        elif value is not None:
+            self.sheet.write_string(row, column, str(value))
+
+    def _format(self, code: str) -> Format:
+        if code not in self.formats:
+            self.formats[code] = self.book.add_format({"num_format": code})
+        return self.formats[code]
+
+
+def _number_format(value: float, unit: str) -> str:
+    """Choose decimals or, for very small and large figures, an exponent that is a multiple of three."""
+    if unit == "1":
+        return "0.0%"
+    plain = value == 0 or _PLAIN[0] <= abs(value) < _PLAIN[1]
+    symbol = _SYMBOLS.get(unit, unit)
+    return ("0.0000" if plain else "##0.000E+0") + (f'" {symbol}"' if symbol else "")
+
+
 def _shortlist_sheet(book: Workbook, head: Format, shortlist: Shortlist) -> None:
     sheet = book.add_worksheet("Shortlist")
-    formats = {
-        "percent": book.add_format({"num_format": "0.0%"}),
-        "figure": book.add_format({"num_format": "0.0000"}),
-        "small": book.add_format({"num_format": "0.00E+00"}),
-        "whole": book.add_format({"num_format": "0"}),
-    }
+    writer = _Writer(book, sheet)
     rows = shortlist.frame.to_dict("records")
     for k, column in enumerate(shortlist.columns):
         sheet.write_string(0, k, heading(column), head)
-        sheet.set_column(k, k, _WIDTHS.get(column.name, 12))
+        sheet.set_column(k, k, _WIDTHS.get(column.name, 13))
         for r, row in enumerate(rows, start=1):
-            value = row[column.name]
-            if isinstance(value, bool):
-                sheet.write_string(r, k, "yes" if value else "")
-            elif isinstance(value, str):
-                sheet.write_string(r, k, value)
-            elif column.unit == "1":
-                sheet.write_number(r, k, value, formats["percent"])
-            elif isinstance(value, int):
-                sheet.write_number(r, k, value, formats["whole"])
-            else:
-                ordinary = 1e-2 <= abs(value) < 1e5  # noqa: PLR2004 -- readable without an exponent
-                sheet.write_number(r, k, value, formats["figure" if ordinary else "small"])
+            writer.write(r, k, row[column.name], column.unit)
         if column.name in _SHARES and rows:
             bars = {"type": "data_bar", "min_type": "num", "min_value": 0, "max_type": "num", "max_value": 1}
             sheet.conditional_format(1, k, len(rows), k, {**bars, "bar_solid": True, "bar_color": "#9DC3E6"})
@@ -85,46 +127,46 @@ def _shortlist_sheet(book: Workbook, head: Format, shortlist: Shortlist) -> None
 
 def _element_sheet(book: Workbook, head: Format, shortlist: Shortlist) -> None:
     sheet = book.add_worksheet("Elements")
-    figure, percent = book.add_format({"num_format": "0.0000"}), book.add_format({"num_format": "0.0%"})
-    exponent = book.add_format({"num_format": "0.000E+00"})
-    for k, text in enumerate(_ELEMENT_HEADINGS):
-        sheet.write_string(0, k, text, head)
-        sheet.set_column(k, k, 14 if text in {"id", "class"} else 11)
+    writer = _Writer(book, sheet)
+    for k, (name, unit) in enumerate(_ELEMENT_COLUMNS):
+        symbol = "%" if unit == "1" else _SYMBOLS.get(unit, unit)
+        sheet.write_string(0, k, f"{name} [{symbol}]" if unit else name, head)
+        sheet.set_column(k, k, 15 if name in {"id", "class"} else 12)
     r = 0
     for place in range(len(shortlist)):
-        for e in shortlist.elements(place):
+        for element in shortlist.elements(place):
             r += 1
-            sheet.write_number(r, 0, place + 1)
-            for k, text in (
-                (1, str(shortlist.pool.ids[place])),
-                (2, e.name),
-                (3, e.nodes[0]),
-                (4, e.nodes[1]),
-            ):
-                sheet.write_string(r, k, text)
-            if e.phase:
-                sheet.write_number(r, 5, e.phase)
-            sheet.write_string(r, 6, e.device)
-            sheet.write_number(r, 7, e.series)
-            sheet.write_number(r, 8, e.area, figure)
-            sheet.write_number(r, 9, e.value, exponent)
-            sheet.write_string(r, 10, "F" if e.kind == "capacitor" else "Ω")
-            for k, value, form in (
-                (11, e.multiplier, figure),
-                (12, e.voltage, figure),
-                (13, e.rating, figure),
-            ):
-                sheet.write_number(r, k, value, form)
-            sheet.write_number(r, 14, e.stress, percent)
-            if e.source is not None and e.gate is not None:
-                sheet.write_string(r, 15, e.polarity)
-                for k, value in enumerate((*e.source, *e.gate), start=16):
-                    sheet.write_number(r, k, value, figure)
-                sheet.write_string(r, 20, e.supply)
+            values = (place + 1, str(shortlist.pool.ids[place]), *_element_values(element))
+            for k, (value, (_, unit)) in enumerate(zip(values, _ELEMENT_COLUMNS, strict=True)):
+                writer.write(r, k, value, unit)
     sheet.freeze_panes(1, 3)
     if r:
-        sheet.autofilter(0, 0, r, len(_ELEMENT_HEADINGS) - 1)
+        sheet.autofilter(0, 0, r, len(_ELEMENT_COLUMNS) - 1)
     _for_print(sheet)
+
+
+def _element_values(element: Element) -> tuple[str | int | float | None, ...]:
+    """Return the values of the columns from the element on; None where a column is not for its kind."""
+    capacitor = element.kind == "capacitor"
+    nothing = (None, None)
+    return (
+        element.name,
+        *element.nodes,
+        element.phase,
+        element.device,
+        element.polarity or None,
+        element.series,
+        element.area,
+        element.value if capacitor else None,
+        None if capacitor else element.value,
+        element.multiplier,
+        element.voltage,
+        element.rating,
+        element.stress,
+        *(element.source or nothing),
+        *(element.gate or nothing),
+        element.supply or None,
+    )
 
 
 def _assumption_sheet(book: Workbook, head: Format, shortlist: Shortlist) -> None:
