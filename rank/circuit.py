@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass, replace
+from functools import lru_cache
 from typing import TYPE_CHECKING, Literal
 
 from capmuster.enumerate.errors import CapmusterError
@@ -16,6 +17,7 @@ if TYPE_CHECKING:
     from collections.abc import Sequence
 
     from capmuster.enumerate.wiring import Converter
+    from capmuster.rank.switching import SwitchNetwork
 
 PORTS = ("G", "I", "O")
 Plate = Literal["plus", "minus"]
@@ -125,6 +127,14 @@ def _each(values: float | Sequence[float], count: int, what: str) -> list[float]
     return [float(value) for value in values]
 
 
+@lru_cache(maxsize=64)
+def _network(converter: Converter) -> SwitchNetwork:
+    """Switch network of a converter, kept: sizing builds many circuits of one converter."""
+    from capmuster.rank.switching import switch_network  # noqa: PLC0415 - a circuit needs no wiring
+
+    return switch_network(converter)
+
+
 def circuit_of(
     converter: Converter,
     capacitances: float | Sequence[float],
@@ -166,9 +176,7 @@ def circuit_of(
     CapmusterError
         A value is not positive, or the number of values does not fit.
     """
-    from capmuster.rank.switching import switch_network  # noqa: PLC0415 - a circuit needs no wiring
-
-    network = switch_network(converter)
+    network = _network(converter)
     count = len(converter.words)
     farads = _each(capacitances, count, "the capacitances")
     series = _each(series_resistances, count, "the series resistances")

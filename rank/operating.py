@@ -211,7 +211,7 @@ def operate(
         resistor_square[used] += weight * mean_square(
             wave.resistor_currents[0], interval.rates, wave.duration
         )
-        port_peak = max(port_peak, float(np.abs(wave.port_extremes())[..., 0].max()))
+        port_peak = max(port_peak, float(np.abs(wave.port_extremes())[:, 0].max()))
 
     given = np.array(charges)
     total = given.sum(axis=0) * frequency

@@ -147,7 +147,7 @@ def start_up(
             duration=lengths[index],
         )
         seen.take(wave, names[index])
-        peak = max(peak, float(np.abs(wave.port_extremes())[..., 0].max(initial=0.0)))
+        peak = max(peak, float(np.abs(wave.port_extremes())[:, 0].max(initial=0.0)))
         charge -= (distance * np.expm1(-interval.rates * lengths[index])) @ interval.port_currents[0]
     at_step = storage.voltages @ states[0, 0] + storage.voltages_of_ports @ ports
     drawn = storage.voltages_of_ports[:, 0] @ (np.array(network.capacitances) * at_step)

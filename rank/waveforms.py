@@ -51,15 +51,15 @@ class Waveforms:
     port_currents: Array
 
     def capacitor_extremes(self) -> tuple[Array, Array]:
-        """Least and greatest voltage of each capacitor [V], shapes (b, c)."""
+        """Least and greatest voltage of each capacitor over time and batch [V], shapes (c,)."""
         return extremes(self.capacitor_rest, self.capacitor_terms, self.rates, self.duration)
 
     def switch_extremes(self) -> tuple[Array, Array]:
-        """Least and greatest voltage of each switch [V], shapes (b, s)."""
+        """Least and greatest voltage of each switch over time and batch [V], shapes (s,)."""
         return extremes(self.switch_rest, self.switch_terms, self.rates, self.duration)
 
     def port_extremes(self) -> tuple[Array, Array]:
-        """Least and greatest current out of each port [A], shapes (b, p)."""
+        """Least and greatest current out of each port over time and batch [A], shapes (p,)."""
         return extremes(0.0, self.port_currents, self.rates, self.duration)
 
 
@@ -92,13 +92,13 @@ class Extremes:
         """
         count = len(self.capacitor_low)
         low, high = wave.capacitor_extremes()
-        self.capacitor_low = np.minimum(self.capacitor_low, low[:, :count].min(axis=0))
-        self.capacitor_high = np.maximum(self.capacitor_high, high[:, :count].max(axis=0))
+        self.capacitor_low = np.minimum(self.capacitor_low, low[:count])
+        self.capacitor_high = np.maximum(self.capacitor_high, high[:count])
         if phase:
             low, high = wave.switch_extremes()
             blocks = self._phase != phase
-            self.switch_low[blocks] = np.minimum(self.switch_low, low.min(axis=0))[blocks]
-            self.switch_high[blocks] = np.maximum(self.switch_high, high.max(axis=0))[blocks]
+            self.switch_low[blocks] = np.minimum(self.switch_low, low)[blocks]
+            self.switch_high[blocks] = np.maximum(self.switch_high, high)[blocks]
 
 
 def waveforms(

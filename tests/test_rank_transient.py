@@ -10,7 +10,7 @@ from scipy.integrate import solve_ivp
 
 from capmuster.enumerate.errors import CapmusterError
 from capmuster.rank.circuit import Capacitor, Circuit, Switch
-from capmuster.rank.exponentials import extremes, mean_square, zeros
+from capmuster.rank.exponentials import extremes, mean_square
 from capmuster.rank.operating import operate
 from capmuster.rank.steadystate import SteadyState
 from capmuster.rank.transient import start_up
@@ -127,7 +127,7 @@ def test_extremes_and_mean_square_of_exponentials(seed):
     rates = 10 ** rng.uniform(-2, 2, k)
     terms = rng.normal(size=(7, k)) * 10 ** rng.uniform(-1, 1, (7, k))
     rest, duration = rng.normal(size=7), 3.0
-    low, high = extremes(rest, terms, rates, duration)
+    low, high = extremes(rest[None], terms[None], rates, duration)
     times = np.concatenate([[0.0], duration * np.logspace(-7, 0, 20_001)])
     values = rest[:, None] + terms @ np.exp(-np.outer(rates, times))
     span = np.ptp(values, axis=1)
@@ -144,11 +144,25 @@ def test_extremes_and_mean_square_of_exponentials(seed):
     np.testing.assert_allclose(mean_square(terms, rates, duration), total / duration, rtol=1e-9)
 
 
-def test_zeros_of_a_sum_with_known_ones():
-    """With x = exp(-t) the product (x - 1/2)(x - 1/4)(x - 3/4) has its zeros at -ln of the roots."""
-    coefficients = np.poly([0.5, 0.25, 0.75])  # x^3 first
-    found = zeros(coefficients[::-1], [0.0, 1.0, 2.0, 3.0], 10.0)
-    np.testing.assert_allclose(found, [-math.log(0.75), -math.log(0.5), -math.log(0.25)], rtol=1e-10)
+def test_extremes_at_known_moments():
+    """With x = exp(-t), (x - 1/2)^2 (x - 1/4) is flat at x = 1/2 and at x = 1/3, worth 0 and 1/432."""
+    coefficients = np.poly([0.5, 0.5, 0.25])  # x^3 first
+    low, high = extremes([[coefficients[3]]], coefficients[None, None, 2::-1], np.array([1.0, 2.0, 3.0]), 1.3)
+    assert low[0] == pytest.approx(0.0, abs=1e-14)  # inside; 0.000127 at the end
+    assert high[0] == pytest.approx(0.1875, rel=1e-12)  # at the start
+    low, high = extremes(
+        [[-coefficients[3]]], -coefficients[None, None, 2::-1], np.array([1.0, 2.0, 3.0]), 30.0
+    )
+    assert high[0] == pytest.approx(1 / 16, rel=1e-12)  # at rest
+
+
+def test_extremes_of_a_batch_are_those_of_its_members():
+    rng = np.random.default_rng(7)
+    rates, terms, rest = 10 ** rng.uniform(-2, 2, 6), rng.normal(size=(40, 5, 6)), rng.normal(size=(40, 5))
+    low, high = extremes(rest, terms, rates, 2.0)
+    each = [extremes(rest[i : i + 1], terms[i : i + 1], rates, 2.0) for i in range(40)]
+    np.testing.assert_allclose(low, np.min([one[0] for one in each], axis=0), rtol=1e-10, atol=1e-11)
+    np.testing.assert_allclose(high, np.max([one[1] for one in each], axis=0), rtol=1e-10, atol=1e-11)
 
 
 @pytest.mark.parametrize(
