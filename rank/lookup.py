@@ -56,4 +56,4 @@ def _family_members(n: int) -> Iterable[Converter]:
 
     if n > _LARGEST_FAMILY_MEMBER:
         return ()
-    return (member.converter for member in members(n) if member.converter.n == n)
+    return (member.converter for member in members(n, n))
