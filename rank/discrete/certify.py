@@ -25,6 +25,7 @@ if TYPE_CHECKING:
 
 _ROUNDS: Final = 60
 _STEPS: Final = 2**32  # whole steps that the largest total is divided into
+_LEAST: Final = 1e-9  # a loss that nobody counts [W]
 _ANGLES: Final = np.linspace(0.0, np.pi / 2, 9)[1:-1]
 _PROVEN: Final = 1e-7
 """Relative gap below which a choice counts as proven: the rounding of the coefficients takes up to 1e-8."""
@@ -165,9 +166,9 @@ def _model(problem: Problem, known: Outcome) -> _Model:
 def _scale(problem: Problem, known: Outcome) -> float:
     """Loss that all whole steps together stand for [W]: the limit, or what is surely enough."""
     if problem.limit < math.inf:
-        return problem.limit
+        return max(problem.limit, _LEAST)
     if known.selection is not None and problem.least == "loss":
-        return known.objective * (1 + 1e-6)
+        return max(known.objective * (1 + 1e-6), _LEAST)
     return math.fsum(
         len(g.names)
         * float(np.max(problem.square_current * (g.options.slow + g.options.fast) + g.options.fixed))
