@@ -2,9 +2,9 @@
 
 Makowski and Maksimovic, "Performance limits of switched-capacitor DC-DC converters", IEEE PESC 1995: with n
 flying capacitors the positive ratios P/Q with P and Q from 1 to the Fibonacci number F(n + 1) of 1, 2, 3, 5,
-8, ... can be reached. With the ports' roles exchanged that is -P/Q with P + Q up to the same number.
-Complete enumeration finds exactly these up to n = 5; for n = 6 it finds three triples of port charges more (`BEYOND`), so that from there on
-the number is only known to be enough.
+8, ... can be reached. With the ports' roles exchanged that is -P/Q with P + Q up to the same number. Complete
+enumeration finds exactly these up to n = 5; for n = 6 it finds three triples of port charges more (`BEYOND`),
+so that from there on the number is only known to be enough.
 """
 
 from __future__ import annotations
@@ -26,7 +26,7 @@ def fibonacci_bound(n: int) -> int:
 
 
 def capacitors_needed(ratio: Fraction) -> int:
-    """Least number of flying capacitors that is known to reach a ratio other than 0; exact up to `ENUMERATED`."""
+    """Least number of flying capacitors known to reach a ratio other than 0; exact up to `ENUMERATED`."""
     n = 1
     while not _reached(ratio, n):
         n += 1
