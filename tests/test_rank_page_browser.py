@@ -8,7 +8,10 @@ from typing import TYPE_CHECKING
 import pytest
 from page_examples import COLUMNS, HOSTILE, example
 
+from capmuster.rank.brief import load_brief
 from capmuster.rank.page.render import render_page
+from capmuster.rank.page.shortlisted import page_data
+from capmuster.rank.shortlist import shortlist
 
 if TYPE_CHECKING:
     from collections.abc import Iterator
@@ -379,6 +382,22 @@ def test_print_fits_a4_and_leaves_the_controls_out(opened):
     (size,) = boxes
     # 72 points to the inch of 25.4 mm.
     assert size == pytest.approx([side * 72 / 25.4 for side in A4_LANDSCAPE], abs=1.0)
+
+
+def test_a_table_with_every_column_is_printed_uncut(browser, tmp_path):
+    # The widest there is: all loss terms over a load profile.
+    data = page_data(shortlist(load_brief("greenhouse-node-losses"), top=6))
+    found = _open(browser, tmp_path / "page.html", data)
+    found.page.click("#columns summary")
+    found.page.click("#all-columns")
+    width = round((A4_LANDSCAPE[0] - 2 * MARGIN) * PX_PER_MM)
+    found.page.emulate_media(media="print")
+    found.page.set_viewport_size({"width": width, "height": 700})
+    heads = found.page.locator("#table > thead > tr:first-child > th:visible").count()
+    assert heads == len(data.columns)
+    assert found.page.evaluate("document.documentElement.scrollWidth") <= width
+    assert found.complaints == []
+    found.page.context.close()
 
 
 def test_print_is_dark_on_white_even_from_the_dark_view(browser, tmp_path):

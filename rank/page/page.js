@@ -101,6 +101,7 @@
     const shown = boxes.filter((box) => box.checked).length;
     for (const body of bodies) body.rows[1].cells[0].colSpan = shown + 1;
     table.classList.toggle("many", shown > 18);
+    table.classList.toggle("crowded", shown > 30);
   };
   for (const box of boxes) box.addEventListener("change", applyColumns);
   const first = boxes.map((box) => box.defaultChecked);

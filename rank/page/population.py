@@ -7,16 +7,21 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from capmuster.enumerate.converters import converters, table_of
+from capmuster.enumerate.converters import ratios_of_triple, table_of
 from capmuster.enumerate.families import members
+from capmuster.rank.candidates import census_candidates
 from capmuster.rank.page.data import BINS, Population
+from capmuster.rank.scoredcensus import scored_census
 from capmuster.rank.switchtable import score
 
 if TYPE_CHECKING:
     from collections.abc import Iterator
 
-    from capmuster.enumerate.converters import ConverterTable
+    from numpy.typing import NDArray
+
     from capmuster.rank.brief import Brief
+
+    _Shares = NDArray[np.float64]
 
 
 def population_of(brief: Brief, complete_up_to: int) -> Population:
@@ -30,12 +35,11 @@ def population_of(brief: Brief, complete_up_to: int) -> Population:
         Flying capacitors up to which the census is taken; above it, family members up to the brief's most.
     """
     counts = np.zeros((BINS, BINS), dtype=np.int64)
-    for table in _tables(brief, complete_up_to):
-        scores = score(table)
+    for utilisations in _utilisations(brief, complete_up_to):
         # A utilisation is above 0 and at most 1: bin k holds (k / BINS, (k + 1) / BINS].
         places = [
             np.clip(np.ceil(values * BINS * (1 - 1e-12)).astype(np.int64) - 1, 0, BINS - 1)
-            for values in (scores.capacitor_utilisation, scores.switch_utilisation)
+            for values in utilisations
         ]
         np.add.at(counts, (places[0], places[1]), 1)
     description = f"All {int(counts.sum())} converters that hold the output"
@@ -47,23 +51,24 @@ def population_of(brief: Brief, complete_up_to: int) -> Population:
     return Population(counts, f"{description}.")
 
 
-def _tables(brief: Brief, complete_up_to: int) -> Iterator[ConverterTable]:
-    """Yield the converters whose ratio holds the output, each once."""
+def _utilisations(brief: Brief, complete_up_to: int) -> Iterator[tuple[_Shares, _Shares]]:
+    """Yield both utilisations of the converters whose ratio holds the output, each converter once."""
+
+    def wanted(ratio: Fraction) -> bool:
+        return brief.holds(ratio) and (brief.ratios is None or ratio in brief.ratios)
+
     for n in range(1, complete_up_to + 1):
-        for ratio in brief.ratios or (None,):
-            table = converters(n, ratio)
-            pairs, row_of = np.unique(table.port_charges[:, 1:], axis=0, return_inverse=True)
-            holds = np.array([brief.holds(Fraction(-int(i), int(o))) for i, o in pairs.tolist()], dtype=bool)
-            if len(pairs):
-                yield table.take(holds[row_of.reshape(-1)])
+        ratios = {ratio for triple in scored_census(n).triples for ratio in ratios_of_triple(triple)}
+        for ratio in sorted(filter(wanted, ratios)):
+            measures = census_candidates(n, ratio).measures
+            yield measures.capacitor_utilisation, measures.switch_utilisation
     beyond = {
         member.converter.id: member.converter
         for member in members(brief.most_capacitors)
-        if member.converter.n > complete_up_to
-        and brief.holds(member.converter.ratio)
-        and (brief.ratios is None or member.converter.ratio in brief.ratios)
+        if member.converter.n > complete_up_to and wanted(member.converter.ratio)
     }
     for n in range(complete_up_to + 1, brief.most_capacitors + 1):
         same_size = [one for one in beyond.values() if one.n == n]
         if same_size:
-            yield table_of(same_size)
+            scores = score(table_of(same_size))
+            yield scores.capacitor_utilisation, scores.switch_utilisation

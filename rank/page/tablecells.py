@@ -39,7 +39,6 @@ _SHOWN = {
     "pareto",
 }
 _SHOWN_WITHOUT_LOSSES = {
-    "conductance_per_area_S_per_mm2",
     "impedance_ohm",
     "capacitor_utilisation",
     "switch_utilisation",
