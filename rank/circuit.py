@@ -118,12 +118,16 @@ def _positive(value: float, what: str, unit: str) -> None:
         raise CapmusterError(f"{what} is {value} {unit}", accepted="a positive number")
 
 
+def _count(count: int) -> str:
+    return f"1 or {count}" if count > 1 else "1"
+
+
 def _each(values: float | Sequence[float], count: int, what: str) -> list[float]:
     """One value for all, or one for each."""
     if isinstance(values, int | float):
         return [float(values)] * count
     if len(values) != count:
-        raise CapmusterError(f"{len(values)} values for {what}", accepted=f"1 or {count}")
+        raise CapmusterError(f"{len(values)} values for {what}", accepted=_count(count))
     return [float(value) for value in values]
 
 
@@ -184,7 +188,7 @@ def circuit_of(
     shares = _each(plate_fraction, count, "the plate fraction")
     sides: list[Plate] = [plate] * count if isinstance(plate, str) else list(plate)
     if len(sides) != count:
-        raise CapmusterError(f"{len(sides)} values for the plate", accepted=f"1 or {count}")
+        raise CapmusterError(f"{len(sides)} values for the plate", accepted=_count(count))
 
     where = {
         (index, side): node for node, cluster in enumerate(network.clusters) for index, side in cluster.plates

@@ -22,6 +22,7 @@ if TYPE_CHECKING:
     from capmuster.enumerate.wiring import Converter
     from capmuster.rank.circuit import Circuit
     from capmuster.rank.steadystate import SteadyState
+    from capmuster.rank.subject import Subject
 
 SETTLED = 1e-6
 MOST_CYCLES = 5000
@@ -82,6 +83,29 @@ def bench_for(steady: SteadyState, frequency: float, input_voltage: float, outpu
             accepted=f"a frequency at which it settles within {MOST_CYCLES}",
         )
     return Bench(frequency, input_voltage, output_voltage, cycles)
+
+
+def subject_deck(subject: Subject) -> str:
+    """Write the deck of a circuit at its operating point.
+
+    Parameters
+    ----------
+    subject
+        The circuit and its operating point.
+
+    Returns
+    -------
+    str
+        The deck.
+
+    Raises
+    ------
+    CapmusterError
+        Settling takes too many cycles.
+    """
+    output = subject.point().output_voltage
+    bench = bench_for(subject.steady, subject.frequency, subject.input_voltage, output)
+    return write_deck(subject.converter, subject.circuit, bench)
 
 
 def write_deck(converter: Converter, circuit: Circuit, bench: Bench) -> str:

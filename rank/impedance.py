@@ -38,7 +38,8 @@ class OutputImpedance:
     resistance
         Exact output resistance [ohm].
     slow, fast
-        The two limits, R_SSL and R_FSL [ohm], of the same circuit.
+        The two limits, R_SSL and R_FSL [ohm], of the circuit without plate parasitics: at frequencies where
+        those count the fast limit would otherwise be one in which plates work as flying capacitors.
     ratio
         No-load output voltage over input voltage. Without plate parasitics it is the ideal ratio.
     back_ratio
@@ -121,7 +122,7 @@ def output_impedance(circuit: Circuit | SteadyState, frequency: npt.ArrayLike) -
     steady = circuit if isinstance(circuit, SteadyState) else SteadyState.of(circuit)
     frequency = np.atleast_1d(np.asarray(frequency, dtype=float))
     charges = steady.charges(frequency)
-    slow, fast = steady.limit_charges(frequency)
+    slow, fast = steady.bare.limit_charges(frequency)
     drawn = charges[:, 1, 1]
     ratio = -charges[:, 1, 0] / drawn
     back_ratio = -charges[:, 0, 1] / drawn

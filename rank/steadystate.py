@@ -19,7 +19,7 @@ charge vector per unit of output charge written in the modes, :math:`\xi`, and
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cached_property
 from typing import TYPE_CHECKING
 
@@ -207,6 +207,11 @@ class SteadyState:
             loops=loops,
             recover=(left / sigma) @ right[:states],
         )
+
+    @cached_property
+    def bare(self) -> SteadyState:
+        """The same circuit without plate parasitics, whose limits are the published sums."""
+        return SteadyState.of(replace(self.circuit, plates=())) if self.circuit.plates else self
 
     @cached_property
     def _skew(self) -> Array | None:
