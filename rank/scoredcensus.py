@@ -18,7 +18,6 @@ from capmuster.enumerate.skeletons import skeletons
 from capmuster.enumerate.store import StoreError, open_census, write_census
 from capmuster.enumerate.tally import Tally, triple_numbers
 from capmuster.enumerate.threads import one_thread
-from capmuster.rank._version import __version__
 from capmuster.rank.cellscores import CellScores, concatenate, score_cells
 
 if TYPE_CHECKING:
@@ -142,6 +141,8 @@ def census_path(n: int) -> Path:
 
 def write_scored_census(n: int, path: Path, say: Callable[[Note], None] = silent) -> None:
     """Build the scored census of ``n`` capacitors and write it to a file.
+
+    The shipped files are written by this function, to `census_path`.
 
     Raises
     ------
@@ -270,5 +271,5 @@ def _write(path: Path, made: _MemorySource) -> None:
         made.skeletons,
         {name: getattr(made.all_cells, name) for name in _STORED},
         [(group.triple, group.rows, group.clean) for group in made.groups],
-        {"program": "capmuster", "version": __version__},
+        {"program": "capmuster"},
     )

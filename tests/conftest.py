@@ -4,9 +4,14 @@ from __future__ import annotations
 
 import os
 import shutil
+from typing import TYPE_CHECKING
 
 import pytest
 from hypothesis import HealthCheck, settings
+
+if TYPE_CHECKING:
+    from collections.abc import Iterator
+    from pathlib import Path
 
 # Derandomised: the same examples each time. No deadline: machines differ, and speed has its own tests.
 settings.register_profile(
@@ -29,6 +34,15 @@ def find_program(names: tuple[str, ...], package: str) -> str:
     if os.environ.get("CAPMUSTER_REQUIRE_PROGRAMS") == "1":
         pytest.fail(message)
     pytest.skip(message)
+
+
+@pytest.fixture(scope="session", autouse=True)
+def cache_folder(tmp_path_factory: pytest.TempPathFactory) -> Iterator[Path]:
+    """Keep large censuses of all tests in one folder of their own, never in the user's."""
+    folder = tmp_path_factory.mktemp("cache")
+    with pytest.MonkeyPatch.context() as patch:
+        patch.setenv("CAPMUSTER_CACHE", str(folder))
+        yield folder
 
 
 @pytest.fixture(scope="session")
