@@ -12,7 +12,13 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from capmuster.rank.losses import capacitor_coefficients, plate_steps, switch_coefficients
+from capmuster.rank.losses import (
+    capacitor_coefficients,
+    every_class,
+    plate_steps,
+    series_counts,
+    switch_coefficients,
+)
 from capmuster.rank.technology import Choice
 
 if TYPE_CHECKING:
@@ -27,7 +33,6 @@ if TYPE_CHECKING:
     Floats = NDArray[np.float64]
 
 _O = 2
-_ROUNDING = 1e-9  # as in `Technology`: a voltage that is the rating but for rounding is the rating
 _TIE = 1e-12
 
 
@@ -47,12 +52,6 @@ class ClassCosts:
     series: NDArray[np.int64]
 
 
-def series_counts(voltage: Floats, limit: Floats) -> NDArray[np.int64]:
-    """Devices in series that stand a voltage [V], for classes of given derated ratings; (..., classes)."""
-    count = np.ceil(voltage[..., None] * (1 - _ROUNDING) / limit)
-    return np.maximum(count, 1).astype(np.int64)
-
-
 def capacitor_costs(candidates: Candidates, prices: Prices, volts: float) -> ClassCosts:
     """Price every capacitor with every class; shape (N, n, classes)."""
     table, technology = candidates.table, candidates.brief.technology
@@ -60,7 +59,7 @@ def capacitor_costs(candidates: Candidates, prices: Prices, volts: float) -> Cla
     multiplier = np.abs(table.charges / table.port_charges[:, _O, None])[..., None]
     held = (np.abs(table.voltages) / table.scale[:, None] * volts)[..., None]
     step = (plate_steps(table) * volts)[..., None]
-    parts = capacitor_coefficients(technology, _every(series), multiplier, held, step)
+    parts = capacitor_coefficients(technology, every_class(series), multiplier, held, step)
     limits = _wide(prices.slow) * parts.slow + _wide(prices.series) * parts.series
     spent = _wide(prices.frequency) * parts.plate + parts.leakage
     return ClassCosts(limits * (_wide(prices.capacitor_area) + _wide(prices.loss) * spent), series)
@@ -93,7 +92,7 @@ def priced_switches(  # noqa: PLR0917 -- one figure each
         The other prices.
     """
     series = series_counts(rated, technology.switch_columns().limit)
-    parts = switch_coefficients(technology, _every(series), multiplier[..., None], blocked[..., None])
+    parts = switch_coefficients(technology, every_class(series), multiplier[..., None], blocked[..., None])
     spent = _wide(prices.frequency) * (parts.gate + parts.output_charge) + parts.leakage
     return ClassCosts(
         on[..., None] * parts.fast * (_wide(prices.switch_area) + _wide(prices.loss) * spent), series
@@ -156,11 +155,6 @@ def merged(where: NDArray[np.bool_], chosen: Choice, other: Choice) -> Choice:
         series=np.where(where, chosen.series, other.series),
         cost=np.where(where, chosen.cost, other.cost),
     )
-
-
-def _every(series: NDArray[np.int64]) -> Choice:
-    """Every class once along the last axis."""
-    return Choice(np.broadcast_to(np.arange(series.shape[-1]), series.shape), series, np.ones(series.shape))
 
 
 def _wide(values: Floats) -> Floats:

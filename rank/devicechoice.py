@@ -25,6 +25,7 @@ if TYPE_CHECKING:
 
 _ROUNDS = 4
 _BETTER = 1e-9
+_TINY = 1e-30  # [J/mm2]: a technology without plates has a price of area all the same
 
 
 def choose_and_size(candidates: Candidates) -> tuple[Candidates, Sized]:
@@ -47,26 +48,31 @@ def choose_and_size(candidates: Candidates) -> tuple[Candidates, Sized]:
     allowed = None
     if brief.drive == "rails":
         allowed = rail_driven(candidates.table, candidates.switches, brief)
-        candidates = at_prices(candidates, _led(candidates, by_loss=0.0), allowed)
+        candidates = at_prices(candidates, _led(candidates, by_area=1.0, by_loss=0.0), allowed)
     best, sized = _improved(candidates, size_candidates(candidates), allowed)
-    other = at_prices(candidates, _led(candidates, by_loss=1.0), allowed)
-    rows = np.flatnonzero(differs(candidates, other))
-    if len(rows):
-        part = part_of(other, rows)
-        found = _improved(part, size_candidates(part), None if allowed is None else allowed[rows])
-        best, sized = _better(best, sized, rows, *found)
+    for by_area in (0.0, 1.0):
+        other = at_prices(candidates, _led(candidates, by_area=by_area, by_loss=1.0), allowed)
+        rows = np.flatnonzero(differs(candidates, other))
+        if len(rows):
+            part = part_of(other, rows)
+            found = _improved(part, size_candidates(part), None if allowed is None else allowed[rows])
+            best, sized = _better(best, sized, rows, *found)
     if allowed is not None:
         unable = ((candidates.switches.charges > 0) & ~allowed.any(axis=-1)).any(axis=1)
         sized = replace(sized, merit=np.where(unable, np.nan, sized.merit))
     return best, sized
 
 
-def _led(candidates: Candidates, by_loss: float) -> Prices:
-    """Prices for a first choice: of area alone, or of loss alone at the highest frequency."""
+def _led(candidates: Candidates, *, by_area: float, by_loss: float) -> Prices:
+    """Prices for a first choice: of area, of loss at the highest frequency, or of both.
+
+    An area of 1 mm2 counts as much as its loss per cycle does with the classes of least area.
+    """
+    model, f = candidates.model(candidates.brief.input_nominal), candidates.brief.frequency
     one = np.ones(len(candidates.table))
-    area, f = (1.0 - by_loss) * one, candidates.brief.frequency * one
+    areas = [by_area * f * np.maximum(part.mean(axis=1), _TINY) for part in (model.plate, model.gate)]
     # The price of the slow limit falls with f; series resistance counts beside it as in R_SSL at f.
-    return Prices(1.0 / f, one, one, one, area, area, by_loss * one, f)
+    return Prices(one / f, one, one, one, areas[0], areas[1], by_loss * one, f * one)
 
 
 def _improved(best: Candidates, sized: Sized, allowed: NDArray[np.bool_] | None) -> tuple[Candidates, Sized]:

@@ -20,6 +20,7 @@ if TYPE_CHECKING:
     from capmuster.enumerate.converters import ConverterTable
     from capmuster.enumerate.wiring import Converter
     from capmuster.rank.brief import Brief
+    from capmuster.rank.exactchoice import ExactChoice
     from capmuster.rank.switching import SwitchNetwork
 
 
@@ -85,7 +86,11 @@ class Element:
 
 
 def elements_of(
-    converter: Converter, brief: Brief, capacitor_area: float, switching_area: float
+    converter: Converter,
+    brief: Brief,
+    capacitor_area: float,
+    switching_area: float,
+    exact: ExactChoice | None = None,
 ) -> tuple[Element, ...]:
     """Size every element of a converter.
 
@@ -99,14 +104,19 @@ def elements_of(
         Area of all capacitors [mm2], where the brief counts no losses; else the objective decides.
     switching_area
         Area of all switches that carry charge [mm2], likewise.
+    exact
+        Switches, classes and sizes if they have been chosen exactly.
     """
     table = table_of([converter])
-    network = switch_network(converter)
+    network = switch_network(converter) if exact is None else exact.network
     switches = network_table(table, network)
     chosen = choose_elements(table, switches, brief)
     technology = brief.technology
     if brief.counts_losses:
-        candidate, sized = choose_and_size(Candidates(table, switches, chosen, brief))
+        if exact is None:
+            candidate, sized = choose_and_size(Candidates(table, switches, chosen, brief))
+        else:
+            candidate, sized = exact.candidate, exact.sized
         chosen = candidate.elements
         capacitor_areas = sized.design.capacitors[0]
         working = switches.charges[0] > 0

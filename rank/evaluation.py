@@ -3,15 +3,17 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
 from capmuster.rank.areas import fast_coefficient, least_area, slow_coefficient
-from capmuster.rank.classprices import ClassCosts, cheapest, series_counts
+from capmuster.rank.classprices import ClassCosts, cheapest
 from capmuster.rank.devicechoice import choose_and_size
 from capmuster.rank.gatedrive import floating_drives, rail_driven
+from capmuster.rank.losses import series_counts
 from capmuster.rank.operation import Candidates
+from capmuster.rank.screening import can_be_exact, merit_bound
 from capmuster.rank.switchtable import score, switch_table
 from capmuster.rank.worstcase import ratings
 
@@ -92,6 +94,9 @@ class Evaluation:
         the brief counts no losses.
     sized
         Sizes and losses where the brief counts losses, or None.
+    bound
+        Lower bound on the merit over all classes, switch trees and sizes, where the brief counts losses;
+        minus infinity where there is none.
     """
 
     slow: NDArray[np.float64]
@@ -112,6 +117,7 @@ class Evaluation:
     merit: NDArray[np.float64]
     worst_efficiency: NDArray[np.float64]
     sized: Sized | None = None
+    bound: NDArray[np.float64] | None = None
 
     @property
     def silicon_area(self) -> NDArray[np.float64]:
@@ -172,29 +178,50 @@ def _merged(where: NDArray[np.bool_], chosen: Choice, other: Choice) -> Choice:
 def evaluate(table: ConverterTable, brief: Brief) -> Evaluation:
     """Size every converter of a table for a brief, in one batch."""
     switches = switch_table(table)
-    scores = score(table)
-    elements = choose_elements(table, switches, brief)
-    sized = None
+    candidates = Candidates(table, switches, choose_elements(table, switches, brief), brief)
     if brief.counts_losses:
-        chosen, sized = choose_and_size(Candidates(table, switches, elements, brief))
-        elements = chosen.elements
-        capacitor_area, switching_area = sized.capacitor_area, sized.switching_area
-        impedance, merit, worst = sized.nominal.impedance, sized.merit, sized.worst_efficiency
-        slow, fast = sized.minimum.slow * capacitor_area, sized.minimum.fast * switching_area
-    else:
-        slow = slow_coefficient(elements.capacitor_weights, brief.frequency)
-        fast = fast_coefficient(elements.switch_weights)
-        silicon = None if brief.silicon_area is None else brief.silicon_area - elements.idle_area
-        areas = least_area(slow, fast, brief.r_max(table.ratios), brief.capacitor_area, silicon)
-        capacitor_area, switching_area, impedance = areas.capacitor_area, areas.silicon_area, areas.impedance
-        merit, worst = areas.area + elements.idle_area, worst_efficiency(brief, table.ratios)
-    return Evaluation(
+        chosen, sized = choose_and_size(candidates)
+        bound = merit_bound(chosen, sized) if can_be_exact(brief) else np.full(len(table), -np.inf)
+        return evaluation_of(chosen, sized, bound)
+    elements = candidates.elements
+    slow = slow_coefficient(elements.capacitor_weights, brief.frequency)
+    fast = fast_coefficient(elements.switch_weights)
+    silicon = None if brief.silicon_area is None else brief.silicon_area - elements.idle_area
+    areas = least_area(slow, fast, brief.r_max(table.ratios), brief.capacitor_area, silicon)
+    return _evaluation(
+        candidates,
         slow=slow,
         fast=fast,
-        capacitor_area=capacitor_area,
-        switching_area=switching_area,
+        capacitor_area=areas.capacitor_area,
+        switching_area=areas.silicon_area,
+        impedance=areas.impedance,
+        merit=areas.area + elements.idle_area,
+        worst_efficiency=worst_efficiency(brief, table.ratios),
+    )
+
+
+def evaluation_of(candidates: Candidates, sized: Sized, bound: NDArray[np.float64]) -> Evaluation:
+    """Gather the figures of sized candidates, with the bounds on their merits over all classes and trees."""
+    return _evaluation(
+        candidates,
+        slow=sized.minimum.slow * sized.capacitor_area,
+        fast=sized.minimum.fast * sized.switching_area,
+        capacitor_area=sized.capacitor_area,
+        switching_area=sized.switching_area,
+        impedance=sized.nominal.impedance,
+        merit=sized.merit,
+        worst_efficiency=sized.worst_efficiency,
+        sized=sized,
+        bound=bound,
+    )
+
+
+def _evaluation(candidates: Candidates, **figures: Any) -> Evaluation:  # noqa: ANN401 -- fields of Evaluation
+    table, switches, elements = candidates.table, candidates.switches, candidates.elements
+    scores = score(table)
+    able = rail_driven(table, switches, candidates.brief)
+    return Evaluation(
         idle_area=elements.idle_area,
-        impedance=impedance,
         ratio=table.ratios,
         switches=scores.switches,
         capacitor_utilisation=scores.capacitor_utilisation,
@@ -203,12 +230,8 @@ def evaluate(table: ConverterTable, brief: Brief) -> Evaluation:
         highest_blocking_voltage=elements.ratings.switches.max(axis=1),
         output_evenness=output_evenness(table),
         clean=scores.clean,
-        floating_drives=floating_drives(
-            rail_driven(table, switches, brief), elements.switch_choice, switches
-        ),
-        merit=merit,
-        worst_efficiency=worst,
-        sized=sized,
+        floating_drives=floating_drives(able, elements.switch_choice, switches),
+        **figures,
     )
 
 

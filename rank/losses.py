@@ -30,6 +30,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from capmuster.rank.sizing import LossModel
+from capmuster.rank.technology import Choice
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -37,11 +38,12 @@ if TYPE_CHECKING:
     from capmuster.enumerate.converters import ConverterTable
     from capmuster.rank.evaluation import Elements
     from capmuster.rank.switchtable import SwitchTable
-    from capmuster.rank.technology import Choice, Technology
+    from capmuster.rank.technology import Technology
 
     Floats = NDArray[np.float64]
 
 _O = 2
+_ROUNDING = 1e-9  # as in `Technology`: a voltage that is the rating but for rounding is the rating
 _BLOCKING = 0.5  # share of the time in which a switch blocks, at 50 % duty
 
 
@@ -237,4 +239,55 @@ def switch_coefficients(
         gate=np.broadcast_to(classes.gate_charge[k] * classes.drive[k], each.shape),
         output_charge=charge * each,
         leakage=_BLOCKING * classes.leakage[k] * each**2 / classes.rating[k],
+    )
+
+
+def series_counts(voltage: Floats, limit: Floats) -> NDArray[np.int64]:
+    """Devices in series that stand a voltage [V], for classes of given derated ratings; (..., classes)."""
+    count = np.ceil(voltage[..., None] * (1 - _ROUNDING) / limit)
+    return np.maximum(count, 1).astype(np.int64)
+
+
+def every_class(series: NDArray[np.int64]) -> Choice:
+    """Choose every class once, along the last axis."""
+    return Choice(np.broadcast_to(np.arange(series.shape[-1]), series.shape), series, np.ones(series.shape))
+
+
+def best_of_all(
+    table: ConverterTable, switches: SwitchTable, elements: Elements, technology: Technology, volts: float
+) -> LossModel:
+    """Write coefficients that no choice of classes, and in fixed-ratio use no tree of switches, gets below.
+
+    Each coefficient is the least over all classes, whichever class it is. On-resistance is the least per
+    squared blocking voltage, so that a switch costs its charge times its voltage times a constant, and the
+    chain has the least sum of these of all trees.
+
+    Parameters
+    ----------
+    table, switches, elements, technology, volts
+        As in `loss_model`; the voltages that elements must stand are those of ``elements.ratings``.
+    """
+    output = np.abs(table.port_charges[:, _O, None]).astype(np.float64)
+    held = (np.abs(table.voltages) / table.scale[:, None] * volts)[..., None]
+    classes = technology.switch_columns()
+    capacitor = capacitor_coefficients(
+        technology,
+        every_class(series_counts(elements.ratings.capacitors, technology.capacitor_columns().limit)),
+        np.abs(table.charges / output)[..., None],
+        held,
+        (plate_steps(table) * volts)[..., None],
+    )
+    fast = (switches.charges / output * elements.ratings.switches) ** 2 * np.min(
+        classes.resistance / classes.limit**2
+    )
+    return LossModel.build(
+        capacitor.slow.min(axis=-1),
+        fast,
+        switches.phase,
+        series=capacitor.series.min(axis=-1),
+        plate=capacitor.plate.min(axis=-1),
+        leakage_c=capacitor.leakage.min(axis=-1),
+        gate=np.min(classes.gate_charge * classes.drive),
+        controller=technology.controller_power,
+        lead=technology.wiring_resistance,
     )

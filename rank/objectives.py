@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from capmuster.rank.operation import Candidates, Design, Operation, operation
-from capmuster.rank.profile import mean_loss, profile_case
+from capmuster.rank.profile import mean_droop_loss, mean_loss, profile_case
 from capmuster.rank.sizing import Losses, LossModel, Objective, Prices, Sizing, Status, Task, Use, size
 from capmuster.rank.structs import placed, rows_of
 
@@ -47,6 +47,9 @@ class Sized:
         one.
     prices
         What the limits are worth.
+    mix
+        In "least-area" the weight of the least input in the limit on loss, the rest being that of the highest
+        one [1]; NaN for other objectives.
     """
 
     merit: Floats
@@ -60,6 +63,7 @@ class Sized:
     mean_loss: Floats
     mean_efficiency: Floats
     prices: Prices
+    mix: Floats
 
     @property
     def capacitor_area(self) -> Floats:
@@ -94,13 +98,38 @@ def size_candidates(candidates: Candidates) -> Sized:
     brief = candidates.brief
     if not len(candidates.table):
         return _nothing(candidates)
+    mix = np.full(len(candidates.table), np.nan)
     if brief.objective == "least-area":
-        found = _least_area(candidates)
+        found, mix = _least_area(candidates)
     elif brief.objective == "power-density":
         found = _power_density(candidates)
     else:
         found = _least_loss(candidates)
-    return _sized(candidates, found)
+    return _sized(candidates, found, mix)
+
+
+def relaxed_bound(candidates: Candidates) -> Floats:
+    """Bound the merit of relaxed candidates from below, shape (N,); infinity where nothing meets the brief.
+
+    Only for objectives that have a bound; for "least-area" it holds the floor at one end at a time.
+    """
+    brief = candidates.brief
+    if brief.objective == "least-area":
+        ends = [
+            size(candidates.model(volts), _task(candidates, Objective.AREA, volts))
+            for volts in (brief.input_minimum, brief.input_maximum)
+        ]
+        return np.asarray(np.maximum(*(_proven_least(found) for found in ends)))
+    found = _least_loss(candidates)
+    held = np.zeros(len(found.value))
+    if brief.use == "regulated":
+        held = mean_droop_loss(candidates)
+    return _proven_least(found) + held
+
+
+def _proven_least(found: Sizing) -> Floats:
+    least = np.where(np.isnan(found.least), -np.inf, found.least)
+    return np.where(found.status == Status.INFEASIBLE, np.inf, least)
 
 
 def _nothing(candidates: Candidates) -> Sized:
@@ -120,10 +149,11 @@ def _nothing(candidates: Candidates) -> Sized:
         none,
         none,
         Prices(*(none for _ in fields(Prices))),
+        none,
     )
 
 
-def _sized(candidates: Candidates, found: Sizing) -> Sized:
+def _sized(candidates: Candidates, found: Sizing, mix: Floats) -> Sized:
     brief, idle = candidates.brief, candidates.elements.idle_area
     design = _design(found, brief)
     at = [
@@ -160,6 +190,7 @@ def _sized(candidates: Candidates, found: Sizing) -> Sized:
         mean_loss=wasted,
         mean_efficiency=useful / (useful + wasted),
         prices=found.prices,
+        mix=mix,
     )
 
 
@@ -231,34 +262,38 @@ def _power_density(candidates: Candidates) -> Sizing:
     return size(candidates.model(brief.input_nominal), task)
 
 
-def _least_area(candidates: Candidates) -> Sizing:
+def _least_area(candidates: Candidates) -> tuple[Sizing, Floats]:
+    """Sizes, and the weight of the least input in the limit that they are the best for."""
     brief = candidates.brief
     low, high = brief.input_minimum, brief.input_maximum
     models = (candidates.model(low), candidates.model(high))
     found = size(models[1], _task(candidates, Objective.AREA, high))
+    mix = np.zeros(len(found.value))
     if low == high:
-        return found
+        return found, mix
     excess_low, excess_high = _excess(candidates, found, models)
     # The sizes for one end that suffice at the other one are the best for both.
     open_ = np.flatnonzero(np.isfinite(found.value) & ~(excess_low <= _KEPT))
     if not len(open_):
-        return found
+        return found, mix
     part = part_of(candidates, open_)
     there = (models[0].take(open_), models[1].take(open_))
     second = size(there[0], _task(part, Objective.AREA, low))
     at_low, at_high = _excess(part, second, there)
     found = placed(found, open_, second)
+    mix[open_] = 1.0
     both = np.flatnonzero(np.isfinite(second.value) & ~(at_high <= _KEPT))
     if not len(both):
-        return found
+        return found, mix
     rows = open_[both]
-    mixed = _mixed(
+    mixed, weight = _mixed(
         part_of(candidates, rows),
         (there[0].take(both), there[1].take(both)),
         excess_low[rows] - excess_high[rows],
         at_low[both] - at_high[both],
     )
-    return placed(found, rows, mixed)
+    mix[rows] = weight
+    return placed(found, rows, mixed), mix
 
 
 def part_of(candidates: Candidates, rows: NDArray[np.intp]) -> Candidates:
@@ -268,6 +303,7 @@ def part_of(candidates: Candidates, rows: NDArray[np.intp]) -> Candidates:
         candidates.switches.take(rows),
         rows_of(candidates.elements, rows),
         candidates.brief,
+        candidates.relaxed,
     )
 
 
@@ -289,8 +325,8 @@ def _excess(
 
 def _mixed(
     candidates: Candidates, models: tuple[LossModel, LossModel], first: Floats, last: Floats
-) -> Sizing:
-    """Size where both ends bind: find the weight of the least input by the Illinois rule.
+) -> tuple[Sizing, Floats]:
+    """Size where both ends bind, and return the weight of the least input, found by the Illinois rule.
 
     ``first`` and ``last`` are how much more the least input is in excess than the highest one, at weights 0
     and 1.
@@ -299,13 +335,11 @@ def _mixed(
     count = len(candidates.table)
     low, high = np.zeros(count), np.ones(count)
     at_low, at_high = first.copy(), last.copy()
-    least = np.zeros(count)
     best: Sizing | None = None
     for _ in range(_MIXES):
         weight = np.clip((low * at_high - high * at_low) / (at_high - at_low), low, high)
         volts = weight * brief.input_minimum + (1.0 - weight) * brief.input_maximum
         found = size(_mean(models, weight), _task(candidates, Objective.AREA, volts))
-        least = np.fmax(least, found.least)
         more, less = _excess(candidates, found, models)
         best = found
         if np.all(~(np.maximum(more, less) > _KEPT)):
@@ -318,7 +352,7 @@ def _mixed(
     assert best is not None  # noqa: S101 -- for the type checker: the loop runs
     kept = np.isfinite(best.value) & (np.maximum(more, less) <= _KEPT)
     status = np.where(kept, best.status, Status.UNRESOLVED).astype(np.int8)
-    return replace(best, status=status, least=least)
+    return replace(best, status=status), weight
 
 
 def _mean(models: tuple[LossModel, LossModel], weight: Floats) -> LossModel:

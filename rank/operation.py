@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from capmuster.rank.losses import loss_model
+from capmuster.rank.losses import best_of_all, loss_model
 from capmuster.rank.sizing import Losses, LossModel, impedance, losses
 
 if TYPE_CHECKING:
@@ -31,16 +31,20 @@ class Candidates:
         The converters, their switches, and the class of every element.
     brief
         The job.
+    relaxed
+        Whether each coefficient is the best of all classes and trees at once, for bounds.
     """
 
     table: ConverterTable
     switches: SwitchTable
     elements: Elements
     brief: Brief
+    relaxed: bool = False
 
     def model(self, volts: float) -> LossModel:
         """Coefficients at an input voltage [V]."""
-        return loss_model(self.table, self.switches, self.elements, self.brief.technology, volts)
+        write = best_of_all if self.relaxed else loss_model
+        return write(self.table, self.switches, self.elements, self.brief.technology, volts)
 
     def ideal(self, volts: float) -> Floats:
         """Output without droop, its magnitude, shape (N,) [V]."""

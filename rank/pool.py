@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections import Counter
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import TYPE_CHECKING
 
@@ -63,6 +63,9 @@ class Pool:
         Number of converters of the right sign that hold the output.
     left_out
         How many of these were left out, by reason.
+    unsized_bounds
+        Bounds on the merits of the topologies that were left out because their classes have no sizes that
+        meet the brief; see `Evaluation.bound`.
     refused
         Reason for each included converter that is no candidate, by its id.
     """
@@ -77,6 +80,7 @@ class Pool:
     complete_up_to: int
     considered: int
     left_out: dict[str, int]
+    unsized_bounds: NDArray[np.float64]
     refused: dict[str, str]
 
     def __len__(self) -> int:
@@ -95,6 +99,24 @@ class Pool:
         """Wiring code of the candidate at a place."""
         return self.tables[int(self.group[place])].code(int(self.row[place]))
 
+    def in_order(self, order: NDArray[np.intp]) -> Pool:
+        """Return the candidates in another order, their Pareto set marked anew."""
+        figures, capacitors = rows_of(self.evaluation, order), self.capacitors[order]
+        return replace(
+            self,
+            group=self.group[order],
+            row=self.row[order],
+            ids=self.ids[order],
+            capacitors=capacitors,
+            evaluation=figures,
+            pareto=_pareto(figures, capacitors),
+        )
+
+
+def reordered(pool: Pool, merit: NDArray[np.float64]) -> NDArray[np.intp]:
+    """Order the candidates of a pool by other merits, ties as ever: switches, capacitors, id."""
+    return np.lexsort((pool.ids, pool.capacitors, pool.evaluation.switches, _tie_classes(merit)))
+
 
 def gather(brief: Brief, include: Sequence[Converter] = ()) -> Pool:
     """Enumerate, size and order all candidates of a brief.
@@ -112,22 +134,29 @@ def gather(brief: Brief, include: Sequence[Converter] = ()) -> Pool:
     refused: dict[str, str] = {}
     considered = 0
     fits: list[tuple[ConverterTable, Evaluation]] = []
+    unsized: list[NDArray[np.float64]] = [np.zeros(0)]
     for table, chosen in _sources(brief, reach, include):
         holds = _where(table, brief.holds)
         considered += int(np.count_nonzero(holds))
-        kept, figures, reasons = _judged(table.take(holds), brief, forgive_unclean=chosen)
+        kept, figures, reasons, bounds = _judged(table.take(holds), brief, forgive_unclean=chosen)
+        unsized.append(bounds)
         left_out.update(reasons)
         if len(kept):
             fits.append((kept, figures))
         elif chosen:
             refused[table.ids()[0]] = next(iter(reasons), _NOT_HELD)
-    return _ordered(brief, fits, reach=reach, considered=considered, left_out=left_out, refused=refused)
+    pool = _ordered(brief, fits, reach=reach, considered=considered, left_out=left_out, refused=refused)
+    return replace(pool, unsized_bounds=np.concatenate(unsized))
 
 
 def _judged(
     table: ConverterTable, brief: Brief, *, forgive_unclean: bool
-) -> tuple[ConverterTable, Evaluation, Counter[str]]:
-    """Size converters that hold the output; return those that meet the brief, and why the others do not."""
+) -> tuple[ConverterTable, Evaluation, Counter[str], NDArray[np.float64]]:
+    """Size converters that hold the output.
+
+    Returns those that meet the brief, why the others do not, and bounds on what those without sizes could
+    reach.
+    """
     reasons: Counter[str] = Counter()
 
     def keep(good: NDArray[np.bool_], reason: str) -> NDArray[np.bool_]:
@@ -142,6 +171,7 @@ def _judged(
     most_switches, most_area = brief.most_switches or np.inf, brief.area or np.inf
     table = table.take(keep(np.asarray(scores.switches <= most_switches), _TOO_MANY_SWITCHES))
     figures = evaluate(table, brief)
+    bounds = np.zeros(0) if figures.bound is None else figures.bound[~np.isfinite(figures.merit)]
     checks: tuple[tuple[str, Callable[[Evaluation], NDArray[np.bool_]]], ...] = (
         (_NO_SIZES if brief.counts_losses else _NO_AREA, lambda f: np.isfinite(f.merit)),
         (_TOO_LARGE, lambda f: np.asarray(f.area <= most_area * (1 + _ROUNDING))),
@@ -153,7 +183,7 @@ def _judged(
         if not good.all():
             reasons[reason] += int(np.count_nonzero(~good))
         table, figures = table.take(good), rows_of(figures, good)
-    return table, figures, reasons
+    return table, figures, reasons, bounds
 
 
 def _both(table: ConverterTable, scores: Scores, rows: NDArray[np.bool_]) -> tuple[ConverterTable, Scores]:
@@ -225,16 +255,6 @@ def _ordered(
     order = np.lexsort((ids, capacitors, figures.switches, _tie_classes(figures.merit)))
     figures = rows_of(figures, order)
     capacitors = capacitors[order]
-    costs = np.stack(
-        [
-            figures.area,
-            -figures.worst_efficiency,
-            capacitors.astype(np.float64),
-            figures.switches.astype(np.float64),
-            figures.highest_blocking_voltage,
-        ],
-        axis=1,
-    )
     return Pool(
         tables=tuple(tables),
         group=group[order].astype(np.intp),
@@ -242,12 +262,25 @@ def _ordered(
         ids=ids[order],
         capacitors=capacitors,
         evaluation=figures,
-        pareto=frontier(_rounded(costs)),
+        pareto=_pareto(figures, capacitors),
         complete_up_to=reach,
         considered=considered,
         left_out=dict(left_out),
+        unsized_bounds=np.zeros(0),
         refused=refused,
     )
+
+
+def _pareto(figures: Evaluation, capacitors: NDArray[np.int64]) -> NDArray[np.bool_]:
+    """Mark the candidates that no other one beats."""
+    costs = (
+        figures.area,
+        -figures.worst_efficiency,
+        capacitors.astype(np.float64),
+        figures.switches.astype(np.float64),
+        figures.highest_blocking_voltage,
+    )
+    return frontier(_rounded(np.stack(costs, axis=1)))
 
 
 _TIE = 1e-9

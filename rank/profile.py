@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import replace
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, TypedDict
 
 import numpy as np
@@ -14,6 +14,7 @@ if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from capmuster.rank.brief import Brief
+    from capmuster.rank.objectives import Sized
     from capmuster.rank.operation import Candidates, Design
     from capmuster.rank.sizing import LossModel
 
@@ -106,6 +107,50 @@ def mean_loss(candidates: Candidates, design: Design) -> tuple[Floats, Floats]:
             wasted = wasted + point.share * at.losses.total
             useful = useful + point.share * at.output_power
     return wasted, useful
+
+
+@dataclass(frozen=True, slots=True)
+class LossPoint:
+    """An input at which the losses of N candidates count.
+
+    Attributes
+    ----------
+    cycle
+        Weight of the losses per cycle, shape (N,) [1].
+    still
+        Weight of leakage, shape (N,) [1].
+    volts
+        Input voltage [V].
+    """
+
+    cycle: Floats
+    still: Floats
+    volts: float
+
+
+def loss_points(brief: Brief, sized: Sized) -> tuple[LossPoint, ...]:
+    """Return the inputs at which losses count, as the sizing of N candidates took them."""
+    one = np.ones(len(sized.merit))
+    if brief.objective == "least-area":
+        low, high = sized.mix, 1 - sized.mix
+        return LossPoint(low, low, brief.input_minimum), LossPoint(high, high, brief.input_maximum)
+    if not brief.profile:
+        return (LossPoint(one, one, brief.input_nominal),)
+    return tuple(
+        LossPoint((0.0 if point.asleep else point.share) * one, point.share * one, _volts(brief, point.volts))
+        for point in brief.profile
+    )
+
+
+def mean_droop_loss(candidates: Candidates) -> Floats:
+    """Mean of what a held output loses by its droop, over the profile or at the nominal input; (N,) [W]."""
+    brief = candidates.brief
+    points = [(point.share, point.current, _volts(brief, point.volts)) for point in brief.profile]
+    lost = [
+        share * current * (candidates.ideal(volts) - abs(brief.required))
+        for share, current, volts in points or [(1.0, brief.current, brief.input_nominal)]
+    ]
+    return np.asarray(np.sum(lost, axis=0))
 
 
 def _volts(brief: Brief, volts: float | None) -> float:

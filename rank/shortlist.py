@@ -12,12 +12,14 @@ from capmuster.enumerate.errors import CapmusterError
 from capmuster.enumerate.families import family_names
 from capmuster.rank._version import __version__
 from capmuster.rank.cautions import cautions
+from capmuster.rank.certify import certify
 from capmuster.rank.columns import COLUMNS, Column, columns_of
 from capmuster.rank.elements import Element, elements_of
 from capmuster.rank.evaluation import ceiling, efficiency
 from capmuster.rank.lossvalues import loss_values
 from capmuster.rank.pool import Pool, gather
 from capmuster.rank.structs import rows_of
+from capmuster.rank.switching import switch_network
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
@@ -26,6 +28,9 @@ if TYPE_CHECKING:
 
     from capmuster.enumerate.wiring import Converter
     from capmuster.rank.brief import Brief
+    from capmuster.rank.certify import Certificate
+    from capmuster.rank.exactchoice import ExactChoice
+    from capmuster.rank.switching import SwitchNetwork
 
 __all__ = ["COLUMNS", "Column", "Included", "Shortlist", "shortlist"]
 
@@ -64,12 +69,18 @@ class Shortlist:
         How many of them the table shows.
     included
         What became of the wirings that the user put in.
+    finalists
+        Exact classes, switch trees and sizes of the rows of the table, None where there are none.
+    certificate
+        What is proven about the order, or None.
     """
 
     brief: Brief
     pool: Pool
     top: int
     included: tuple[Included, ...]
+    finalists: tuple[ExactChoice | None, ...] = ()
+    certificate: Certificate | None = None
 
     def __len__(self) -> int:
         """Rows of the table."""
@@ -169,8 +180,20 @@ class Shortlist:
         """Every capacitor and switch of the candidate in a row, counted from 0, sized."""
         e = self.pool.evaluation
         return elements_of(
-            self.pool.converter(row), self.brief, float(e.capacitor_area[row]), float(e.switching_area[row])
+            self.pool.converter(row),
+            self.brief,
+            float(e.capacitor_area[row]),
+            float(e.switching_area[row]),
+            self._exact(row),
         )
+
+    def network(self, row: int) -> SwitchNetwork:
+        """Return clusters and switches of the candidate in a row, as `elements` lists them."""
+        exact = self._exact(row)
+        return switch_network(self.pool.converter(row)) if exact is None else exact.network
+
+    def _exact(self, row: int) -> ExactChoice | None:
+        return self.finalists[row] if row < len(self.finalists) else None
 
     @cached_property
     def _names(self) -> dict[str, tuple[str, ...]]:
@@ -196,7 +219,8 @@ def shortlist(brief: Brief, *, top: int = 10, include: Sequence[Converter] = ())
     """
     if top < 1:
         raise CapmusterError(f"top: {top} is too small", accepted="1 or more")
-    pool = gather(brief, include)
+    certified = certify(gather(brief, include), brief, top)
+    pool = certified.pool
     place_of = {one: k + 1 for k, one in enumerate(pool.ids.tolist())} if include else {}
     included = tuple(
         Included(
@@ -204,4 +228,4 @@ def shortlist(brief: Brief, *, top: int = 10, include: Sequence[Converter] = ())
         )
         for one in dict.fromkeys(include)
     )
-    return Shortlist(brief, pool, top, included)
+    return Shortlist(brief, pool, top, included, certified.finalists, certified.certificate)

@@ -29,11 +29,15 @@ def joined(structs: Sequence[Struct]) -> Struct:
 
 
 def placed(struct: Struct, rows: NDArray[np.intp], part: Struct) -> Struct:
-    """Return the structure with some of its rows replaced."""
+    """Return the structure with some of its rows replaced; matrices of the part may be narrower."""
 
     def put(arrays: list[NDArray[Any]]) -> NDArray[Any]:
-        whole = arrays[0].copy()
-        whole[rows] = arrays[1]
+        whole, new = arrays[0].copy(), arrays[1]
+        if whole.ndim == 1:
+            whole[rows] = new
+        else:
+            whole[rows] = 0
+            whole[rows, : new.shape[1]] = new
         return whole
 
     return _zipped([struct, part], put)

@@ -5,6 +5,7 @@ from __future__ import annotations
 from typing import TYPE_CHECKING
 
 from capmuster.rank.quantity import format_quantity
+from capmuster.rank.screening import can_be_exact
 
 if TYPE_CHECKING:
     from capmuster.rank.brief import Brief
@@ -74,7 +75,12 @@ def _how_counted(brief: Brief) -> list[tuple[str, str]]:
     return [
         ("efficiency", "all losses of the table, at full load; voltages without droop or ripple"),
         ("areas", "best for the objective within the droop budget at the least input; continuous"),
-        ("classes", "improved at the prices of the sizes until nothing is gained; switches in chains"),
+        (
+            "classes",
+            "by their prices; for the best candidates every class, stack and switch tree is considered"
+            if can_be_exact(brief)
+            else "by their prices, until nothing is gained; switches in chains",
+        ),
     ]
 
 
@@ -163,15 +169,31 @@ _WHAT = {
 
 
 def _certificate(shortlist: Shortlist) -> list[str]:
-    """Say how far the sizes are proven."""
-    sized = shortlist.pool.evaluation.sized
-    if sized is None or not len(shortlist.pool):
+    """Say how far sizes and order are proven."""
+    sized, pool = shortlist.pool.evaluation.sized, shortlist.pool
+    if sized is None or not len(pool):
         return []
-    proven = int(sized.proven.sum())
-    if proven == len(shortlist.pool):
-        return [
-            f"Sizes: the optimum of all {proven} candidates is proven to a relative 1e-9, for their classes."
-        ]
-    return [
-        f"Sizes: the optimum of {proven} of {len(shortlist.pool)} candidates is proven to a relative 1e-9."
+    lines = [
+        f"Sizes: {int(sized.proven.sum())} of {len(pool)} optima proven to a relative 1e-9, for their classes."
     ]
+    proof = shortlist.certificate
+    if proof is None:
+        return [
+            *lines,
+            "Order: classes and switch chains are local optima; no proof over all of them for this brief.",
+        ]
+    lines.append(
+        f"Classes and switch trees: the best are proven for {proof.proven} of {proof.exact} candidates; "
+        f"{proof.screened} others are kept out by a lower bound."
+    )
+    most = pool.complete_up_to
+    if proof.holds:
+        lines.append(
+            f"Order: no other topology with up to {most} capacitors is better than place {proof.places}, "
+            "whatever its classes and switch trees: proven."
+        )
+    else:
+        lines.append(
+            f"Order: {proof.open} topologies behind place {proof.places} could not be proven to belong there."
+        )
+    return lines

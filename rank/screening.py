@@ -1,0 +1,203 @@
+"""Lower bounds on what candidates could reach with any classes, any switch trees and any sizes, in one batch.
+
+The prices of one sized choice bound all others (see `capmuster.rank.exactchoice`). Here the capacitors take
+their best classes, and the switches a bound that no tree gets below: at given prices a switch costs its
+charge times a function of its blocking voltage; with the least slope of that function, over the voltages that
+occur, its cost is at least slope x charge x voltage, and the chain has the least sum of charge x voltage of
+all trees.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from capmuster.rank.losses import (
+    capacitor_coefficients,
+    every_class,
+    plate_steps,
+    series_counts,
+    switch_coefficients,
+)
+from capmuster.rank.objectives import part_of, relaxed_bound
+from capmuster.rank.profile import loss_points
+from capmuster.rank.structs import rows_of
+
+if TYPE_CHECKING:
+    from collections.abc import Sequence
+
+    from numpy.typing import NDArray
+
+    from capmuster.rank.brief import Brief
+    from capmuster.rank.objectives import Sized
+    from capmuster.rank.operation import Candidates
+    from capmuster.rank.profile import LossPoint
+    from capmuster.rank.sizing import Prices
+    from capmuster.rank.technology import Choice
+
+    Floats = NDArray[np.float64]
+
+_O = 2
+_STEP = 0.05  # of log f
+
+
+def can_be_exact(brief: Brief) -> bool:
+    """Whether the bound covers a brief: fixed duty, losses counted at inputs that do not depend on the sizes.
+
+    Not an output held by the frequency, which makes the losses of a choice depend on its own impedance, and
+    not power density, whose load is free.
+    """
+    held = brief.use == "regulated" and brief.regulation == "frequency"
+    return brief.objective in ("least-loss", "least-area") and brief.duty is not None and not held
+
+
+def merit_bound(candidates: Candidates, sized: Sized) -> Floats:
+    """Bound the merit of candidates over all classes, switch trees and sizes, shape (N,).
+
+    Parameters
+    ----------
+    candidates
+        Candidates with chains, as they were sized.
+    sized
+        Their sizes and prices. Where there are none, every element is given the best of every class at once,
+        and the bound is that of the sizes of these; infinity where even they cannot meet the brief.
+    """
+    bound = np.full(len(candidates.table), -np.inf)
+    have = np.flatnonzero(np.isfinite(sized.merit) & np.isfinite(sized.least))
+    if len(have):
+        bound[have] = _by_prices(part_of(candidates, have), rows_of(sized, have))
+    rest = np.flatnonzero(~np.isfinite(sized.merit))
+    if len(rest):
+        bound[rest] = relaxed_bound(replace(part_of(candidates, rest), relaxed=True))
+    return np.asarray(np.fmin(bound, np.where(np.isfinite(sized.merit), sized.merit, np.inf)))
+
+
+@dataclass(frozen=True, slots=True)
+class _Coefficients:
+    """Coefficients of elements with losses weighed over the inputs at which they count.
+
+    `limit` and `second` are those of the slow and the fast limit (of switches `limit` alone), `cycle` [J/mm2]
+    and `still` [W/mm2] those of losses; shapes (N, elements, classes).
+    """
+
+    limit: Floats
+    second: Floats
+    cycle: Floats
+    still: Floats
+
+
+def _by_prices(candidates: Candidates, sized: Sized) -> Floats:
+    brief, prices = candidates.brief, sized.prices
+    points = loss_points(brief, sized)
+    capacitors = _capacitors(candidates, points)
+    chains = _chain(candidates, points)
+    own = _own(candidates, capacitors, chains, prices)
+    rest = sized.least - 2 * own
+    low = brief.frequency if brief.frequency_minimum is None else brief.frequency_minimum
+    span = np.log(brief.frequency / low)
+    count = max(1, int(np.ceil(span / _STEP)))
+    step = span / count
+    least = np.full(len(rest), np.inf)
+    trees = chains if brief.use == "regulated" else _per_volt(candidates, points)
+    for k in range(count):
+        f = np.full(len(rest), np.exp(np.log(low) + step * (k + 0.5)))
+        total = _capacitor_cost(capacitors, prices, f).min(axis=-1).sum(axis=1)
+        total += _switch_cost(candidates, trees, prices, f)
+        least = np.minimum(least, total)
+    # Between the grid's frequencies every part changes by at most the square root of the frequency's change.
+    return np.asarray(rest + 2 * np.exp(-step / 4) * least)
+
+
+def _capacitors(candidates: Candidates, points: Sequence[LossPoint]) -> _Coefficients:
+    """Coefficients of every capacitor with every class."""
+    table, technology = candidates.table, candidates.brief.technology
+    series = series_counts(candidates.elements.ratings.capacitors, technology.capacitor_columns().limit)
+    multiplier = np.abs(table.charges / table.port_charges[:, _O, None])[..., None]
+    held = (np.abs(table.voltages) / table.scale[:, None])[..., None]
+    step = plate_steps(table)[..., None]
+    cycle, still = np.zeros(series.shape), np.zeros(series.shape)
+    for one in points:
+        part = capacitor_coefficients(
+            technology, every_class(series), multiplier, held * one.volts, step * one.volts
+        )
+        cycle += _wide(one.cycle) * part.plate
+        still += _wide(one.still) * part.leakage
+    return _Coefficients(part.slow, part.series, cycle, still)
+
+
+def _switches(
+    candidates: Candidates, points: Sequence[LossPoint], rated: Floats, multiplier: Floats, blocked: Floats
+) -> _Coefficients:
+    """Coefficients of switches with every class; rated voltage [V], blocking voltage per volt of input."""
+    technology = candidates.brief.technology
+    series = series_counts(rated, technology.switch_columns().limit)
+    cycle, still = np.zeros(series.shape), np.zeros(series.shape)
+    for one in points:
+        part = switch_coefficients(
+            technology, every_class(series), multiplier[..., None], (blocked * one.volts)[..., None]
+        )
+        cycle += _wide(one.cycle) * (part.gate + part.output_charge)
+        still += _wide(one.still) * part.leakage
+    return _Coefficients(part.fast, np.zeros(series.shape), cycle, still)
+
+
+def _chain(candidates: Candidates, points: Sequence[LossPoint]) -> _Coefficients:
+    table, switches = candidates.table, candidates.switches
+    multiplier = switches.charges / np.abs(table.port_charges[:, _O, None]).astype(np.float64)
+    blocked = switches.blocking / table.scale[:, None]
+    return _switches(candidates, points, candidates.elements.ratings.switches, multiplier, blocked)
+
+
+def _per_volt(candidates: Candidates, points: Sequence[LossPoint]) -> _Coefficients:
+    """Coefficients per squared charge multiplier and relative volt, at every voltage that may occur."""
+    table, brief = candidates.table, candidates.brief
+    span = int((table.potentials.max(axis=(1, 2)) - table.potentials.min(axis=(1, 2))).max())
+    volts = np.arange(1, span + 1) / table.scale[:, None]
+    found = _switches(candidates, points, volts * brief.input_maximum, np.ones(volts.shape), volts)
+    return replace(found, limit=found.limit / volts[..., None] ** 2)
+
+
+def _capacitor_cost(capacitors: _Coefficients, prices: Prices, f: Floats) -> Floats:
+    """``sqrt(n c)``, shape (N, n, classes)."""
+    limit = _wide(prices.slow * prices.frequency / f) * capacitors.limit
+    limit = limit + _wide(prices.series) * capacitors.second
+    spent = _wide(f) * capacitors.cycle + capacitors.still
+    return np.asarray(np.sqrt(limit * (_wide(prices.capacitor_area) + _wide(prices.loss) * spent)))
+
+
+def _each_switch(coefficients: _Coefficients, prices: Prices, f: Floats) -> Floats:
+    """``sqrt(n c)`` at a price of 1 for on-resistance, shape (N, m, classes)."""
+    spent = _wide(f) * coefficients.cycle + coefficients.still
+    return np.asarray(np.sqrt(coefficients.limit * (_wide(prices.switch_area) + _wide(prices.loss) * spent)))
+
+
+def _switch_cost(candidates: Candidates, coefficients: _Coefficients, prices: Prices, f: Floats) -> Floats:
+    """Least cost of all switches, shape (N,)."""
+    switches, table = candidates.switches, candidates.table
+    best = _each_switch(coefficients, prices, f).min(axis=-1)
+    on = np.sqrt(np.where(switches.phase == 1, prices.phase_1[:, None], prices.phase_2[:, None]))
+    if candidates.brief.use == "regulated":
+        return np.asarray((on * best).sum(axis=1))
+    output = np.abs(table.port_charges[:, _O, None]).astype(np.float64)
+    moved = switches.charges / output * switches.blocking / table.scale[:, None]
+    return np.asarray((on * moved).sum(axis=1) * best.min(axis=1))
+
+
+def _own(candidates: Candidates, capacitors: _Coefficients, chains: _Coefficients, prices: Prices) -> Floats:
+    """Cost of the elements as they were chosen, shape (N,)."""
+    elements, switches = candidates.elements, candidates.switches
+    f = prices.frequency
+    on = np.sqrt(np.where(switches.phase == 1, prices.phase_1[:, None], prices.phase_2[:, None]))
+    total = _chosen(_capacitor_cost(capacitors, prices, f), elements.capacitor_choice).sum(axis=1)
+    each = _chosen(_each_switch(chains, prices, f), elements.switch_choice)
+    return np.asarray(total + (on * each).sum(axis=1))
+
+
+def _chosen(costs: Floats, choice: Choice) -> Floats:
+    return np.asarray(np.take_along_axis(costs, choice.index[..., None], axis=-1)[..., 0])
+
+
+def _wide(values: Floats) -> Floats:
+    return values[:, None, None]
