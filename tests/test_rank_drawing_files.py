@@ -43,6 +43,12 @@ def test_svg_is_well_formed_and_text_stays_text():
     assert float(tree.get("width")) == pytest.approx(drawing.width, abs=0.01)
 
 
+def test_svg_holds_any_title():
+    title = "bell\x07 null\x00 half\ud800 水 ünïcödé"
+    texts = [element.text for element in _tree(converter_sheet(dickson(2), title=title)).iter(SVG + "text")]
+    assert any("bell\ufffd null\ufffd half\ufffd 水 ünïcödé" in text for text in texts)
+
+
 def test_svg_draws_every_mark():
     drawing = converter_sheet(ladder(3, 1))
     marks = [*drawing.wires, *(mark for symbol in drawing.symbols for mark in symbol.marks)]
@@ -127,7 +133,7 @@ def test_tones_differ_without_colour():
 def test_several_files_or_none(tmp_path):
     drawing = converter_sheet(dickson(2))
     good, bad = tmp_path / "a.svg", tmp_path / "missing" / "b.pdf"
-    with pytest.raises(CapmusterError, match="cannot write"):
+    with pytest.raises(CapmusterError, match="does not exist"):
         write_drawings(drawing, [good, bad])
     assert list(tmp_path.iterdir()) == []
     write_drawings(drawing, [good, tmp_path / "b.PNG"])
@@ -135,6 +141,8 @@ def test_several_files_or_none(tmp_path):
     assert good.read_bytes() == drawing_bytes(drawing, ".svg")
     with pytest.raises(CapmusterError, match=r"suffix '\.gif'.*\.svg, \.png, \.pdf"):
         write_drawings(drawing, [tmp_path / "c.gif"])
+    with pytest.raises(CapmusterError, match="named twice"):
+        write_drawings(drawing, [good, str(good)])
     with pytest.raises(CapmusterError, match="no suffix"):
         write_drawings(drawing, [Path("c")])
 
@@ -187,7 +195,7 @@ def _sheet_of_the_doubler() -> Drawing:
         (("I-G/O-I", "--to", "x.svg", "--input-voltage", "3 A"), "--input-voltage: value '3 A'"),
         (("I-G/O-Q", "--to", "x.svg"), "unknown vertex 'Q'"),
         (("1-zzzzzz", "--to", "x.svg"), "1-zzzzzz"),
-        (("I-G/O-I", "--to", "no/such/folder/x.svg"), "cannot write"),
+        (("I-G/O-I", "--to", "no/such/folder/x.svg"), "does not exist"),
     ],
 )
 def test_command_refuses_with_one_line(arguments, message, tmp_path, capsys, monkeypatch):

@@ -27,15 +27,13 @@ def command(*, converter: str, targets: tuple[str, ...], input_voltage: str | No
     and is as tall as its voltage. Up to 5 capacitors a third panel shows every switch once, with the phase
     in which it is closed.
     """
-    from capmuster.rank.lookup import find_converter  # noqa: PLC0415
-
     from capmuster.enumerate.families import family_names  # noqa: PLC0415 -- nothing heavy before it is needed
-    from capmuster.rank.drawing.files import check_suffix, write_drawings  # noqa: PLC0415
+    from capmuster.rank.drawing.files import check_targets, write_drawings  # noqa: PLC0415
     from capmuster.rank.drawing.sheet import converter_sheet  # noqa: PLC0415
+    from capmuster.rank.lookup import find_converter  # noqa: PLC0415
     from capmuster.rank.quantity import read_quantity  # noqa: PLC0415
 
-    for target in targets:
-        check_suffix(target)
+    check_targets(targets)
     volts = None if input_voltage is None else read_quantity("--input-voltage", input_voltage, "V")
     chosen = find_converter(converter)
     drawing = converter_sheet(

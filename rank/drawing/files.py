@@ -2,14 +2,13 @@
 
 from __future__ import annotations
 
-import os
 from pathlib import Path
-from tempfile import NamedTemporaryFile
 from typing import TYPE_CHECKING
 
 from capmuster.enumerate.errors import CapmusterError
 from capmuster.rank.drawing.printed import printed
 from capmuster.rank.drawing.svg import svg
+from capmuster.rank.export import check_writable, write_all
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
@@ -52,36 +51,31 @@ def drawing_bytes(drawing: Drawing, suffix: str) -> bytes:
     return printed(drawing, "png" if suffix == ".png" else "pdf")
 
 
-def write_drawings(drawing: Drawing, targets: Sequence[str | Path]) -> None:
-    """Write a drawing to files, in the format of each one's suffix: all of them or none.
+def check_targets(targets: Sequence[str | Path]) -> None:
+    """Refuse files that a drawing cannot be written to, before any work is done.
 
     Raises
     ------
     CapmusterError
-        A suffix is unknown, or a file cannot be written.
+        A suffix is unknown, a file is named twice, or its folder cannot be written.
     """
-    contents = [drawing_bytes(drawing, suffix) for suffix in [check_suffix(target) for target in targets]]
-    written: list[tuple[Path, Path]] = []
-    try:
-        for target, content in zip(map(Path, targets), contents, strict=True):
-            with NamedTemporaryFile(dir=target.parent, prefix=".capmuster-", delete=False) as file:
-                written.append((Path(file.name), target))
-                file.write(content)
-        for temporary, target in written:
-            _share(temporary)
-            temporary.replace(target)
-    except OSError as error:
-        raise CapmusterError(
-            f"drawing: cannot write '{error.filename}': {error.strerror}",
-            accepted="a path that can be written",
-        ) from None
-    finally:
-        for temporary, _ in written:
-            temporary.unlink(missing_ok=True)
+    for target in targets:
+        check_suffix(target)
+        check_writable(Path(target))
+    places = [Path(target).resolve() for target in targets]
+    for target, place in zip(targets, places, strict=True):
+        if places.count(place) > 1:
+            raise CapmusterError(f"drawing: '{target}' is named twice", accepted="each file once")
 
 
-def _share(path: Path) -> None:
-    """Give a temporary file, which only its owner may read, the permissions of a new file."""
-    mask = os.umask(0)
-    os.umask(mask)
-    path.chmod(0o666 & ~mask)
+def write_drawings(drawing: Drawing, targets: Sequence[str | Path]) -> None:
+    """Write a drawing to files, each in the format of its suffix: all of them or none.
+
+    Raises
+    ------
+    CapmusterError
+        As in `check_targets`.
+    """
+    check_targets(targets)
+    contents = [drawing_bytes(drawing, check_suffix(target)) for target in targets]
+    write_all([Path(target) for target in targets], contents)

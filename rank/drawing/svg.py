@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from dataclasses import dataclass
 from html import escape
 from itertools import groupby
@@ -61,6 +62,14 @@ INLINE = Palette("currentColor", "var(--soft)", "var(--faint)", "var(--accent)",
 """Colours of the page that the drawing stands in."""
 
 
+_NOT_IN_XML = re.compile("[\x00-\x08\x0b\x0c\x0e-\x1f\ud800-\udfff\ufffe\uffff]")
+
+
+def _escaped(text: str) -> str:
+    """Return text that stays text, without the characters that XML cannot hold."""
+    return escape(_NOT_IN_XML.sub("\N{REPLACEMENT CHARACTER}", text))
+
+
 def number(value: float) -> str:
     """Write a length with at most two decimals."""
     text = f"{value:.2f}".rstrip("0").rstrip(".")
@@ -80,7 +89,7 @@ def svg(drawing: Drawing, palette: Palette = PRINT, *, inline: bool = False) -> 
         Whether it is to stand inside an HTML page: then without XML header and background.
     """
     width, height = number(drawing.width), number(drawing.height)
-    title = escape(drawing.title)
+    title = _escaped(drawing.title)
     head = (
         f'<svg xmlns="http://www.w3.org/2000/svg" width="{width}" height="{height}" '
         f'viewBox="0 0 {width} {height}" role="img" font-family="{FONT}">'
@@ -144,7 +153,7 @@ def _labels(labels: Iterable[Label], palette: Palette) -> list[str]:
         side = f' text-anchor="{anchor}"' if anchor != "start" else ""
         found.append(f'<g font-size="{number(size)}"{weight}{side} fill="{getattr(palette, tone)}">')
         found += [
-            f'<text x="{number(label.x)}" y="{number(label.y)}">{escape(label.text)}</text>'
+            f'<text x="{number(label.x)}" y="{number(label.y)}">{_escaped(label.text)}</text>'
             for label in group
         ]
         found.append("</g>")
