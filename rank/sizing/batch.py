@@ -29,7 +29,7 @@ if TYPE_CHECKING:
 
 __all__ = ["Prices", "Sizing", "Status", "size"]
 
-_BLOCK = 4096  # candidates at a time: the arrays of a block stay in the cache
+_BLOCK = 8192  # candidates at a time: the arrays of a block stay in the cache
 # Longest step, rounds, whether to start afresh: a few rounds for all, more for the rest, then for what
 # resists.
 _ATTEMPTS = ((4.0, 9, True), (4.0, 30, False), (4.0, 60, True), (1.0, 120, True))

@@ -86,11 +86,11 @@ class Case:
     droop: Floats
 
     def possible(self) -> NDArray[np.bool_]:
-        """Return where fixed losses and fixed resistance leave anything to the elements, shape (B,)."""
+        """Return where fixed losses, fixed resistance and a held output leave anything, shape (B,)."""
         load = self.easiest_load(self.conduction * self.lead)
         loss_left = self.budget - self.controller / load - self.conduction * self.lead * load
         fixed = (self.loop + self.lead) * np.exp(self.log_load_least)
-        return np.asarray((loss_left > 0.0) & (self.impedance > fixed))
+        return np.asarray((loss_left > 0.0) & (self.impedance > fixed) & (self.droop >= 0.0))
 
     def easiest_load(self, wiring: Floats) -> Floats:
         """Return the load at which fixed loss and wiring take least per ampere, shape (B,) [A].

@@ -23,12 +23,14 @@ if TYPE_CHECKING:
 
 __all__ = ["Found", "search"]
 
-_NOTHING = -40.0  # logarithm of a price that is nothing
+_NOTHING = -700.0  # logarithm of a price that is nothing
+_LOWEST_PIN = -60.0
 _PIN = -14.0  # below that a price whose limit is not reached is taken for nothing
 _PIN_OF_DENSITY = -33.0  # the price of area may be what holds a load that hardly matters
 _STEEPEST = 12.0  # logarithm of the steepest angle: the fast limit is all but the whole
 _BEYOND = 3.0  # farthest that the unknown of a bounded scalar may go beyond its bounds
 _HARDLY = 1e-6  # a step that is hardly one
+_CLOSE = 0.01  # residual of the angle below which bounds may meet
 _ROUNDING = 1e-9  # of a step
 _BALLAST = 1e-10  # added to the slope of a limit by its price
 _BALLAST_OF_LOAD = 1e-6  # added to the slope of the load's condition by the load
@@ -92,7 +94,7 @@ class Found:
     def settled(self, gap: float, places: NDArray[np.intp] | slice = slice(None)) -> NDArray[np.bool_]:
         """Return where the bounds meet to a relative gap, or are proven never to."""
         lower, upper = self.lower[places], self.upper[places]
-        return (np.isfinite(upper) & (upper - lower <= gap * upper)) | np.isposinf(lower)
+        return (np.isfinite(upper) & (lower >= (1.0 - gap) * upper)) | np.isposinf(lower)
 
     def put(self, places: NDArray[np.intp], other: Found) -> None:
         """Take over what another search found for these candidates."""
@@ -155,12 +157,14 @@ def search(problem: Problem, values: Floats, gap: float, longest: float, most_ro
     with np.errstate(all="ignore"):
         for number in range(1, most_rounds + 1):
             rows, snapshot = state.problem.conditions(state.values)
-            low, design = lower_bound(state.problem, snapshot), upper_bound(state.problem, snapshot)
             if number in _PROOFS:
-                low = np.where(cannot_be_met(state.problem, state.values), np.inf, low)
-            if state.problem.case.objective is Objective.AREA:
-                low = np.where(low > state.problem.case.area * (1.0 + _ROUNDING), np.inf, low)
-            _record(found, state.places, low, design, snapshot)
+                found.lower[state.places[cannot_be_met(state.problem, state.values)]] = np.inf
+            if _any_close(state.problem, rows):
+                low = lower_bound(state.problem, snapshot)
+                if state.problem.case.objective is Objective.AREA:
+                    low = np.where(low > state.problem.case.area * (1.0 + _ROUNDING), np.inf, low)
+                _record(found, state.places, low, upper_bound(state.problem, snapshot), snapshot)
+            found.rounds[state.places] += 1
             going = ~found.settled(gap, state.places)
             if not going.any():
                 break
@@ -171,9 +175,13 @@ def search(problem: Problem, values: Floats, gap: float, longest: float, most_ro
     return found
 
 
+def _any_close(problem: Problem, rows: list[Dual]) -> bool:
+    """Return whether any candidate is near enough to its optimum for its bounds to be worth the work."""
+    return bool(np.any(np.abs(rows[problem.names.index("angle")].value) < _CLOSE))
+
+
 def _record(found: Found, places: NDArray[np.intp], low: Floats, design: Design, at: Snapshot) -> None:
     """Note the bounds, and the design of every candidate that has improved."""
-    found.rounds[places] += 1
     found.lower[places] = np.fmax(found.lower[places], low)
     better = design.value < found.upper[places]
     chosen = places[better]
@@ -211,7 +219,7 @@ def _step(state: _State, rows: list[Dual], longest: float) -> None:
         gone = (state.values[k] <= state.pin) & slack[k]
         state.values[k] = np.where(gone, _NOTHING, np.maximum(state.values[k], state.pin))
     # A price that was nothing too early gets more room below the next time.
-    state.pin = np.maximum(state.pin - np.where(freed, 6.0, 0.0), _NOTHING + 1.0)
+    state.pin = np.maximum(state.pin - np.where(freed, 6.0, 0.0), _LOWEST_PIN)
 
 
 def _allowed(

@@ -9,7 +9,7 @@ sin phi y``. The unknown `angle` is log tan phi.
 s_k(y)`` with ``s_k = sqrt(R_k^2 - y^2)``. The mean frequency is ``f = X h(y)`` with ``h = sum_k w_k / s_k``,
 and the hardest point, of impedance R_0, must do with the highest frequency: ``hypot(X / f_most, y) <= R_0``.
 Both regions are convex, the first because a harmonic mean of concave functions is concave. `angle` is log tan
-phi with ``y = R_0 sin phi``, and `rate` the logarithm of the price of log f.
+phi with ``y = R_0 sin phi``, and `rate` the logarithm of what log f costs per price of loss.
 """
 
 from __future__ import annotations
@@ -20,7 +20,6 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from capmuster.rank.sizing.dual import Dual, combine, exp, hypot, log, sqrt
-from capmuster.rank.sizing.task import Objective
 from capmuster.rank.sizing.unknowns import Unknowns, polar
 
 if TYPE_CHECKING:
@@ -110,7 +109,7 @@ class Blend:
 class Held:
     """Prices and conditions of an output held by frequency. Attributes as in `Blend`."""
 
-    def __init__(self, case: Case, u: Unknowns, weight: float) -> None:
+    def __init__(self, case: Case, u: Unknowns, weight: float) -> None:  # noqa: ARG002 -- as in `Blend`
         self.limit = case.impedance - u.current * case.lead
         log_cos, log_sin = polar(u.free["angle"])
         cos, sin = exp(log_cos), exp(log_sin)
@@ -119,17 +118,17 @@ class Held:
         h, slope, lead = Dual(0.0), Dual(0.0), Dual(0.0)
         for wanted, share in zip(case.wanted, case.share, strict=True):
             R = wanted - u.current * case.lead
-            s = sqrt((R - self.limit) * (R + self.limit) + hardest * hardest)
-            h = h + share / s
-            slope = slope + share * self.fast_limit / (s * s * s)
-            lead = lead + share * R / (s * s * s)
+            inverse = 1.0 / ((R - self.limit) * (R + self.limit) + hardest * hardest)
+            part = share * sqrt(inverse)
+            h, cubic = h + part, part * inverse
+            slope = slope + cubic
+            if u.log_load.slopes:
+                lead = lead + cubic * R
         self.h = h
-        rate, hard = exp(u.free["rate"]), u.price["impedance"]
-        if case.objective is Objective.LOSS:
-            rate = weight * rate
+        rate, hard = u.nu * exp(u.free["rate"]), u.price["impedance"]
         f, most = exp(u.log_f), np.exp(case.log_f_most)
         falling = rate * h / f
-        by_fast = rate * slope / h
+        by_fast = rate * (slope * self.fast_limit / h)
         by_hard = hard * cos / most
         self.log_slow = log(falling + by_hard)
         self.log_fast = log(by_fast + hard * sin)
@@ -147,7 +146,7 @@ class Held:
         log_X = log(whole.X)
         return {
             "angle": log(self.fast_limit) - log(whole.y),
-            "rate": u.free["rate"] - _log(u.nu * whole.cycling),
+            "rate": u.free["rate"] - _log(whole.cycling),
             "log_f": u.log_f - log_X - log(self.h),
             "impedance": log(self.limit) - log(hypot(whole.X / self.most, whole.y)),
         }

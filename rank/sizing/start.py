@@ -22,6 +22,7 @@ if TYPE_CHECKING:
 __all__ = ["first_guess", "unknown_names"]
 
 _ROUNDS = 5
+_STEEP = 0.75  # share of the hardest impedance that the fast limit may start with
 _INACTIVE = -3.0  # of the logarithm of a price that may turn out to be nothing
 
 
@@ -126,17 +127,18 @@ def first_guess(
     -------
     values, reference : (d, B) float array
     """
-    guess = _guess(case, _lump(capacitors, switches))
-    by_loss = case.objective is Objective.LOSS
-    values = {name: np.full_like(guess.area, _INACTIVE) for name in LIMITS}
-    reference = {name: np.ones_like(guess.area) for name in names}
-    values["log_f"], values["log_load"] = guess.log_f, np.log(guess.load)
-    values["angle"], values["duty"] = np.log(guess.y / guess.x), np.zeros_like(guess.area)
-    (_loss_prices if by_loss else _area_prices)(case, guess, values, reference)
+    lumped = _lump(capacitors, switches)
+    values = {name: np.full_like(lumped.slow, _INACTIVE) for name in LIMITS}
+    values["duty"] = np.zeros_like(lumped.slow)
+    reference = {name: np.ones_like(lumped.slow) for name in names}
     if case.held:
-        rate = guess.cycling if by_loss else reference["loss"] * guess.cycling
-        values["rate"], values["angle"] = np.log(rate), np.clip(values["angle"], -2.0, 2.0)
-        values["impedance"], reference["impedance"] = np.full_like(rate, -1.0), rate / case.impedance
+        _guess_held(case, lumped, values, reference)
+    else:
+        guess = _guess(case, lumped)
+        values["log_f"], values["log_load"] = guess.log_f, np.log(guess.load)
+        values["angle"] = np.log(guess.y / guess.x)
+        prices = _loss_prices if case.objective is Objective.LOSS else _area_prices
+        prices(case, guess, values, reference)
     for name in ("impedance", "area", "area_c", "area_s"):
         if name in names:
             # no price on a limit that is not there
@@ -206,3 +208,48 @@ def _area_prices(case: Case, guess: _Guess, values: dict[str, Floats], reference
     reference["loss"] = nu
     values["impedance"] = np.where(guess.tight, 0.0, _INACTIVE)
     reference["impedance"] = (area + nu * guess.loss) / R
+
+
+def _guess_held(case: Case, lumped: _Lumped, values: dict[str, Floats], reference: dict[str, Floats]) -> None:
+    """Guess unknowns and prices where the output is held by frequency.
+
+    With three quarters of the hardest impedance by the fast limit the switches are fixed, and the mean
+    frequency is X h: the loss of the capacitors does not depend on their area, that of the switches grows with
+    X.
+    """
+    by_loss = case.objective is Objective.LOSS
+    least, most = np.exp(case.log_load_least), np.exp(case.log_load_most)
+    load = np.clip(0.3 * case.impedance / (case.lead + case.loop), least, most)
+    limit = case.impedance - case.lead * load
+    y = _STEEP * limit
+    spread = (case.wanted - case.lead * load) ** 2 - y**2
+    h, slope = (case.share / np.sqrt(spread)).sum(axis=0), (case.share * y / spread**1.5).sum(axis=0)
+    area_s = lumped.fast / np.maximum(y - case.loop * load, 0.2 * y)
+    per_cycle = lumped.cycle_s * area_s + case.cycle / load
+    by_capacitors = h * lumped.slow * lumped.cycle_c
+    most_X = 0.9 * np.exp(case.log_f_most) * np.sqrt(limit**2 - y**2)
+    if by_loss:
+        room = np.minimum(case.area, case.area_c + case.area_s) / load
+        unlimited = np.sqrt(lumped.slow * h * per_cycle / lumped.leakage_c)
+        area_c = np.minimum(unlimited, np.maximum(room - area_s, 0.3 * room))
+        X = np.minimum(lumped.slow / area_c, most_X)
+    else:
+        budget = case.budget - case.controller / load - by_capacitors - lumped.leakage_s * area_s
+        X = np.clip(budget / (h * per_cycle), 1e-3 * most_X, most_X)
+    area_c = lumped.slow / X
+    cycling = by_capacitors + X * h * per_cycle
+    # price of X x X = rate of the frequency's cost = price of area x area + loss of the capacitors
+    push = np.maximum(X * h * per_cycle - lumped.leakage_c * area_c, 0.1 * cycling)
+    nu = np.ones_like(area_c) if by_loss else area_c / push
+    theta = push / area_c if by_loss else np.ones_like(area_c)
+    values["angle"] = np.full_like(X, np.log(_STEEP / np.sqrt(1.0 - _STEEP**2)))
+    values["rate"], values["log_f"], values["log_load"] = np.log(cycling), np.log(X * h), np.log(load)
+    by_switches = theta * area_s + nu * (X * h * lumped.cycle_s + lumped.leakage_s) * area_s
+    rest = by_switches - nu * cycling * y * slope / h
+    values["impedance"] = np.where(rest > 0.0, 0.0, _INACTIVE)
+    reference["impedance"] = np.maximum(rest, 0.1 * by_switches) / (limit * _STEEP**2)
+    if by_loss:
+        for name in ("area", "area_c", "area_s"):
+            values[name], reference[name] = np.zeros_like(X), theta
+    else:
+        values["loss"], reference["loss"] = np.zeros_like(X), nu
