@@ -15,7 +15,9 @@ from capmuster.rank._version import __version__
 if TYPE_CHECKING:
     from collections.abc import Sequence
 
-_COMMANDS = ("list", "show", "draw", "rank", "export", "parts", "count", "survey")
+_COMMANDS = (
+    "list", "show", "draw", "curve", "deck", "verify", "rank", "export", "parts", "count", "survey",
+)  # fmt: skip
 _FAILED = 1
 _BAD_INPUT = 2
 _INTERRUPTED = 130

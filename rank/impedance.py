@@ -6,8 +6,21 @@ exact impedance is a sum of single loops, `x_k coth(x_k / y_k)` with `sum x_k = 
 
 .. math:: x \coth(x/y) \le R_{out} \le x + y
 
-with equality on the left when all loops relax alike. The left bound holds for every circuit without dead
-time, since charge takes the way of least loss: unlike a root of powers, it errs on one side only.
+with equality on the left when all loops relax alike. The left bound holds for any circuit without dead time,
+since charge takes the way of least loss: unlike a root of powers, it errs on one side only.
+
+Seen over 940 seeded converters of the census with two to four capacitors, sized by the closed form of `areas`,
+at seven quotients x/y from 1/4 to 4: error of the blend, root mean square and range.
+
+============  =======================  =================================
+blend         elements of one class    classes a factor e apart, 1 sigma
+============  =======================  =================================
+exponent 2    4.1 %, -4.4 to +8.8 %    3.4 %, -13.7 to +8.8 %
+exponent 2.6  2.8 %, -11.8 to +2.2 %   4.7 %, -20.3 to +2.2 %
+x coth(x/y)   2.4 %, -12.2 to 0 %      4.5 %, -20.3 to 0 %
+============  =======================  =================================
+
+`tests/test_rank_impedance.py` keeps this record.
 """
 
 from __future__ import annotations

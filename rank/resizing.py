@@ -24,6 +24,7 @@ if TYPE_CHECKING:
     from capmuster.rank.technology import CapacitorClass, Technology
 
 _RESCALED = 1e-12
+_ROUNDS = 50
 _ROUNDING = 1e-9
 
 
@@ -90,6 +91,7 @@ def element_circuit(
         plate_fraction=plates,
         plate=sides,
         duty=duty,
+        between=[(*one.nodes, one.phase) for one in elements if one.phase is not None],
     )
 
 
@@ -129,15 +131,16 @@ def resized(
     """Scale all areas until the required output is held exactly; idle switches do not scale, so repeat."""
     brief, sides = job.brief, _plates(job, elements)
     wiring = brief.technology.wiring_resistance if brief.counts_losses else 0.0
-    while True:
+    for _ in range(_ROUNDS):
         circuit = _circuit(job, elements, sides)
         impedance = output_impedance(circuit, job.frequency)
         droop = abs(impedance.ratio[0]) * brief.input_minimum - abs(brief.required)
         budget = min(float(droop / job.current - wiring), promised)
         step = float(impedance.resistance[0] / budget) if budget > 0 else 1.0
         if abs(step - 1.0) < _RESCALED:
-            return elements, circuit, impedance, budget > 0
+            break
         elements = tuple(_scaled(element, step) for element in elements)
+    return elements, circuit, impedance, budget > 0
 
 
 def _scaled(element: Element, step: float) -> Element:

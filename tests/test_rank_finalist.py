@@ -8,6 +8,7 @@ import pytest
 
 from capmuster.rank.brief import load_brief
 from capmuster.rank.finalist import finalist, finalists
+from capmuster.rank.finaltable import COLUMNS, finalist_frame
 from capmuster.rank.impedance import output_impedance
 from capmuster.rank.lookup import find_converter
 from capmuster.rank.resizing import element_circuit
@@ -114,3 +115,19 @@ def test_finalists_follow_the_shortlist(briefs, best):
     found = briefs["pump-shelf"]
     assert [one.converter for one in best["pump-shelf"]] == [found.pool.converter(k) for k in range(4)]
     assert len(finalists(found, top=2)) == 2
+
+
+def test_table_sets_blend_and_exact_side_by_side(best):
+    for one in best.values():
+        frame = finalist_frame(one)
+        assert list(frame.columns) == [column.name for column in COLUMNS]
+        assert frame.attrs["units"]["exact_ohm"] == "ohm"
+        np.testing.assert_allclose(frame.correction, frame.exact_ohm / frame.blend_ohm)
+        assert sorted(frame.exact_place) == [1, 2, 3, 4]
+        np.testing.assert_array_equal(
+            frame.sort_values("exact_area_mm2").exact_place.to_numpy(), [1, 2, 3, 4]
+        )
+        # What start-up takes beyond its class is named with the voltage, and nothing else is.
+        for row, finalist_ in zip(frame.itertuples(), one, strict=True):
+            assert (row.start_up_stress > 1) == bool(row.overstressed)
+            assert row.overstressed.count(" V") == len(finalist_.overstressed)

@@ -16,7 +16,7 @@ _OPTIONS = (
     click.option(
         "--capacitance",
         metavar="C[,C...]",
-        help="Of every capacitor, or of each one in the order of the wiring, e.g. '1 uF' or '2.2u,1u'.",
+        help="Of every capacitor, or of each one as show lists them, e.g. '1 uF' or '2.2u,1u'.",
     ),
     click.option(
         "--resistance",

@@ -54,7 +54,9 @@ def command(
     form: str,
     **options: str | None,
 ) -> None:
-    """Trace the exact output resistance and the efficiency over frequency and over load.
+    """Trace output resistance and efficiency, exactly.
+
+    Both are swept over the frequency and over the load.
 
     Without values a wiring has 1 uF capacitors and 100 mohm switches. A brief stands for its best finalist as
     sized. Efficiency counts conduction and plate parasitics, no gate drive.

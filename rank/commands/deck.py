@@ -21,7 +21,9 @@ from capmuster.rank.commands.circuitoptions import circuit_options, read_values
 )
 @click.option("--to", "target", metavar="FILE", help="Where to write; without it the deck is printed.")
 def command(*, subject: str, place: int, target: str | None, **options: str | None) -> None:
-    """Write a SPICE deck of a converter, for ngspice's batch mode.
+    """Write a SPICE deck that measures a converter.
+
+    It runs unchanged in ngspice's batch mode.
 
     The deck holds the converter as a subcircuit with a parameter for every value, and a bench that measures
     no-load ratio, output resistance, efficiency and the peak voltage of each switch. Without values a wiring

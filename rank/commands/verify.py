@@ -34,7 +34,9 @@ _HEADER = ["id", "quantity", "exact", "simulated", "difference"]
     help="How rows are written.",
 )
 def command(*, subject: str, top: int, form: str, **options: str | None) -> None:
-    """Run ngspice on a converter's deck and hold the exact results against it.
+    """Hold the exact results against ngspice.
+
+    It is run on the deck of the wiring, or on those of the best finalists of BRIEF.
 
     Without values a wiring has unequal ones (1, 1.5, 2.2, ... uF and 0.1 ohm), so that no symmetry hides a
     fault. Exit status 1 when any two values differ by more than 0.1 %; peaks are compared on the scale
