@@ -108,7 +108,7 @@ def test_it_is_built_once_and_says_so(small, said):
 
 
 def flipped(data, place):
-    """The same bytes with one bit changed."""
+    """Change one bit."""
     return data[:place] + bytes([data[place] ^ (1 << place % 8)]) + data[place + 1 :]
 
 
