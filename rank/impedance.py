@@ -9,8 +9,8 @@ exact impedance is a sum of single loops, `x_k coth(x_k / y_k)` with `sum x_k = 
 with equality on the left when all loops relax alike. The left bound holds for any circuit without dead time,
 since charge takes the way of least loss: unlike a root of powers, it errs on one side only.
 
-Seen over 940 seeded converters of the census with two to four capacitors, sized by the closed form of `areas`,
-at seven quotients x/y from 1/4 to 4: error of the blend, root mean square and range.
+Seen over 940 seeded converters of the census, two to four capacitors, sized by the closed form of `areas`, at
+seven quotients x/y from 1/4 to 4: error of the blend, root mean square and range.
 
 ============  =======================  =================================
 blend         elements of one class    classes a factor e apart, 1 sigma
