@@ -149,6 +149,7 @@ def circuit_of(
     plate: Plate | Sequence[Plate] = "minus",
     duty: float = 0.5,
     dead_time: float = 0.0,
+    between: Sequence[tuple[str, str, int]] | None = None,
 ) -> Circuit:
     """Build the circuit of a converter with the given element values.
 
@@ -169,6 +170,9 @@ def circuit_of(
         there, so its parasitic is left out.
     duty, dead_time
         See `Circuit`.
+    between
+        Names of the two nodes of each switch, and the phase in which it is closed; by default those of the
+        switch network, which are chains.
 
     Returns
     -------
@@ -193,6 +197,8 @@ def circuit_of(
     where = {
         (index, side): node for node, cluster in enumerate(network.clusters) for index, side in cluster.plates
     }
+    at = {cluster.name: node for node, cluster in enumerate(network.clusters)}
+    joins = [(*switch.nodes, switch.phase) for switch in network.switches] if between is None else between
     port = {cluster.port: node for node, cluster in enumerate(network.clusters) if cluster.port}
     return Circuit(
         nodes=tuple(cluster.name for cluster in network.clusters),
@@ -201,8 +207,8 @@ def circuit_of(
             Capacitor(f"C{i + 1}", where[i, 1], where[i, -1], farads[i], series[i]) for i in range(count)
         ),
         switches=tuple(
-            Switch(switch.name, switch.clusters[0], switch.clusters[1], switch.phase, ohm)
-            for switch, ohm in zip(network.switches, ohms, strict=True)
+            Switch(switch.name, at[first], at[second], phase, ohm)
+            for switch, (first, second, phase), ohm in zip(network.switches, joins, ohms, strict=True)
         ),
         plates=tuple(
             PlateParasitic(f"C{i + 1}", where[i, 1 if sides[i] == "plus" else -1], shares[i] * farads[i])

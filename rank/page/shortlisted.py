@@ -159,6 +159,7 @@ def _curve(shortlist: Shortlist, row: int, elements: Sequence[Element]) -> Imped
         [one.value for one in elements if one.kind == "switch"],
         series_resistances=series,
         duty=duty,
+        between=[(*one.nodes, one.phase) for one in elements if one.phase is not None],
     )
     frequencies = frequency * np.logspace(-_DECADES, _DECADES, _STEPS)
     found = output_impedance(circuit, frequencies)
