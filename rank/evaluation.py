@@ -12,8 +12,10 @@ from capmuster.rank.classprices import ClassCosts, cheapest
 from capmuster.rank.devicechoice import choose_and_size
 from capmuster.rank.gatedrive import floating_drives, rail_driven
 from capmuster.rank.losses import series_counts
+from capmuster.rank.networktable import network_table
 from capmuster.rank.operation import Candidates
 from capmuster.rank.screening import can_be_exact, merit_bound
+from capmuster.rank.switching import switch_network
 from capmuster.rank.switchtable import score, switch_table
 from capmuster.rank.worstcase import ratings
 
@@ -177,7 +179,7 @@ def _merged(where: NDArray[np.bool_], chosen: Choice, other: Choice) -> Choice:
 
 def evaluate(table: ConverterTable, brief: Brief) -> Evaluation:
     """Size every converter of a table for a brief, in one batch."""
-    switches = switch_table(table)
+    switches = _switches(table)
     candidates = Candidates(table, switches, choose_elements(table, switches, brief), brief)
     if brief.counts_losses:
         chosen, sized = choose_and_size(candidates)
@@ -198,6 +200,13 @@ def evaluate(table: ConverterTable, brief: Brief) -> Evaluation:
         merit=areas.area + elements.idle_area,
         worst_efficiency=worst_efficiency(brief, table.ratios),
     )
+
+
+def _switches(table: ConverterTable) -> SwitchTable:
+    """Switches of every converter; equipotential ones, which only a single one has, by the exact rule."""
+    if len(table) == 1 and not score(table).clean[0]:
+        return network_table(table, switch_network(table.converter(0)))
+    return switch_table(table)
 
 
 def evaluation_of(candidates: Candidates, sized: Sized, bound: NDArray[np.float64]) -> Evaluation:

@@ -12,7 +12,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from capmuster.enumerate.converters import table_of
-from capmuster.rank.elements import network_table
+from capmuster.rank.networktable import network_table
 from capmuster.rank.switching import switch_network
 from capmuster.rank.worstcase import ratings
 

@@ -11,10 +11,10 @@ from capmuster.enumerate.converters import table_of
 from capmuster.enumerate.wiring import Converter
 from capmuster.rank.brief import load_brief
 from capmuster.rank.circuit import circuit_of
-from capmuster.rank.elements import network_table
 from capmuster.rank.evaluation import choose_elements
 from capmuster.rank.impedance import loop_blend, output_impedance
 from capmuster.rank.losses import TERM_FIELDS, TERMS, loss_model, plate_steps
+from capmuster.rank.networktable import network_table
 from capmuster.rank.operating import operate
 from capmuster.rank.operation import Candidates, Design, operation
 from capmuster.rank.sizing import Losses, impedance, losses

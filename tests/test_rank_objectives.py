@@ -15,8 +15,8 @@ from capmuster.enumerate.wiring import Converter
 from capmuster.rank.brief import load_brief
 from capmuster.rank.conditions import LoadPoint
 from capmuster.rank.devicechoice import choose_and_size
-from capmuster.rank.elements import network_table
 from capmuster.rank.evaluation import choose_elements
+from capmuster.rank.networktable import network_table
 from capmuster.rank.objectives import size_candidates
 from capmuster.rank.operation import Candidates, operation
 from capmuster.rank.pool import gather

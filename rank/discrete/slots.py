@@ -7,7 +7,7 @@ from fractions import Fraction
 from typing import TYPE_CHECKING, Literal
 
 from capmuster.enumerate.converters import table_of
-from capmuster.rank.elements import network_table
+from capmuster.rank.networktable import network_table
 from capmuster.rank.switching import switch_network
 from capmuster.rank.worstcase import ratings
 
