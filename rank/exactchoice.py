@@ -17,8 +17,8 @@ import numpy as np
 from capmuster.enumerate.converters import table_of
 from capmuster.rank.classprices import merged
 from capmuster.rank.devicechoice import choose_and_size
-from capmuster.rank.elements import network_table
 from capmuster.rank.evaluation import choose_elements
+from capmuster.rank.networktable import network_table
 from capmuster.rank.objectives import Sized, part_of, size_candidates
 from capmuster.rank.operation import Candidates
 from capmuster.rank.optioncosts import OptionSet, option_costs, option_set
@@ -86,10 +86,7 @@ def exact_choice(converter: Converter, brief: Brief, enough: float = np.inf) -> 
     enough
         Merit above which the exact choice is of no interest: the search stops once it is proven to be above.
     """
-    network = switch_network(converter)
-    table = table_of([converter])
-    switches = network_table(table, network)
-    start = Candidates(table, switches, choose_elements(table, switches, brief), brief)
+    network, start = start_of(converter, brief)
     candidate, sized = choose_and_size(start)
     if not np.isfinite(sized.merit[0]):
         return None
@@ -120,6 +117,14 @@ def exact_choice(converter: Converter, brief: Brief, enough: float = np.inf) -> 
         if not choices or not np.isfinite(probe.merit[0]):
             break
     return _found(network, candidate, sized, min(least, float(sized.merit[0])), proven=False)
+
+
+def start_of(converter: Converter, brief: Brief) -> tuple[SwitchNetwork, Candidates]:
+    """Make a candidate of a converter, with its chains and with classes by least area."""
+    network = switch_network(converter)
+    table = table_of([converter])
+    switches = network_table(table, network)
+    return network, Candidates(table, switches, choose_elements(table, switches, brief), brief)
 
 
 def _found(
