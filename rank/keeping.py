@@ -74,6 +74,8 @@ class Keeper:
 
     def add(self, cells: CellScores, unit: NDArray[np.int64]) -> None:
         """See clean cells, with the determinants of their skeletons."""
+        if not len(cells):
+            return
         self.waiting.append((cells, unit))
         self.rows += len(cells)
         if self.rows >= _ROWS_AT_ONCE:
