@@ -168,3 +168,5 @@ def _write_table(found: PartsShortlist) -> None:
     click.echo(f"\n{found.certificate}" if found.finalists else found.certificate)
     for reason, count in found.left_out.items():
         click.echo(f"Left out: {count} {reason}.")
+    for text in found.cautions:
+        click.echo(f"Caution: {text}")

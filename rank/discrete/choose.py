@@ -1,13 +1,16 @@
 """Screen the candidates of a brief, search the parts of the best ones, and prove what was found.
 
-The continuous bound puts the candidates in order; the exact dynamic programme finds the best parts of one
-after the other, until the next bound is above the last finalist; CP-SAT proves each finalist.
+Bounds put the candidates in order; the exact dynamic programme finds the best parts of one after the
+other, until the next bound is above the last finalist; CP-SAT helps out where that has no room, and
+proves each finalist.
 """
 
 from __future__ import annotations
 
+import math
 from collections import Counter
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from heapq import heapify, heappop, heappush
 from typing import TYPE_CHECKING, Final
 
 from capmuster.enumerate.errors import CapmusterError
@@ -34,9 +37,10 @@ if TYPE_CHECKING:
     from capmuster.rank.discrete.slots import Slot
     from capmuster.rank.parts_request import PartsRequest
 
-MOST_SCREENED: Final = 500
-"""Candidates that get a continuous bound: the first ones by area."""
+MOST_SCREENED: Final = 3000
+"""Candidates that are looked at: the first ones by area."""
 
+_SEEDS: Final = 6  # candidates whose multipliers bound all others at first
 _TIE: Final = 1e-9  # relative: objectives this close are equal
 _NO_PART: Final = "no part of the stock stands a voltage"
 _NO_CHOICE: Final = "no choice of parts keeps the limits"
@@ -44,14 +48,10 @@ _NO_CHOICE: Final = "no choice of parts keeps the limits"
 
 @dataclass(frozen=True, slots=True)
 class _Case:
-    """A candidate's problem at one frequency, with its continuous bound; values in what is reported."""
+    """A candidate's problem at one frequency."""
 
-    converter: Converter
-    place: int
-    slots: tuple[Slot, ...]
     book: OptionBook
     problem: Problem
-    relaxed: Relaxed
 
     def reported(self, value: float) -> float:
         """Bring a value of what is made least to W with the loss that no choice changes, mm2 or EUR."""
@@ -60,16 +60,41 @@ class _Case:
             return value + self.problem.offset
         return value / (units.per_mm2 if self.problem.least == "footprint" else units.per_eur)
 
-    @property
-    def bound(self) -> float:
-        return self.reported(self.relaxed.bound)
+
+@dataclass(frozen=True, slots=True)
+class _Entrant:
+    """A candidate with its problems, and what is known of them.
+
+    Attributes
+    ----------
+    bound
+        No choice of its parts is below it, in what is reported.
+    relaxed
+        The continuous bound of each problem; empty as long as only other candidates' multipliers were tried.
+    """
+
+    converter: Converter
+    place: int
+    slots: tuple[Slot, ...]
+    cases: tuple[_Case, ...]
+    bound: float
+    relaxed: tuple[Relaxed, ...] = ()
+
+    def order(self) -> tuple[float, int]:
+        return self.bound, self.place
+
+    def tightened(self) -> _Entrant:
+        """Find the continuous bounds."""
+        relaxed = tuple(relax(case.problem) for case in self.cases)
+        bounds = [case.reported(one.bound) for case, one in zip(self.cases, relaxed, strict=True)]
+        return replace(self, relaxed=relaxed, bound=max(self.bound, min(bounds)))
 
 
 @dataclass(frozen=True, slots=True)
 class _Found:
     """A candidate's best parts, at its best frequency."""
 
-    cases: tuple[_Case, ...]
+    entrant: _Entrant
     case: _Case
     outcome: Outcome
 
@@ -79,9 +104,9 @@ class _Found:
 
     def order(self) -> tuple[float, int, int, str]:
         """Order by what is made least; equal ones by fewer switches, fewer capacitors, then id."""
-        converter = self.case.converter
+        converter = self.entrant.converter
         rounded = float(f"{self.objective:.9e}")
-        return rounded, len(self.case.slots) - converter.n, converter.n, converter.id
+        return rounded, len(self.entrant.slots) - converter.n, converter.n, converter.id
 
 
 def choose_parts(
@@ -98,7 +123,8 @@ def choose_parts(
     Parameters
     ----------
     brief
-        What is asked for; its candidates are those of continuous sizing.
+        What is asked for. Its candidates are those of continuous sizing; where that counts conduction only,
+        its area budget is left out, since what counts here is the footprint of parts.
     request
         What is asked of the parts.
     top
@@ -120,7 +146,8 @@ def choose_parts(
     if top < 1:
         raise CapmusterError(f"top: {top} is too small", accepted="1 or more")
     request = resolved(request, brief)
-    pool = gather(brief, include)
+    free = brief if brief.counts_losses else replace(brief, area=None, silicon_area=None, capacitor_area=None)
+    pool = gather(free, include)
     wanted = {one.id for one in include}
     places = [k for k in range(len(pool)) if k < screened or str(pool.ids[k]) in wanted]
     books = _books(request)
@@ -128,18 +155,24 @@ def choose_parts(
     entrants = []
     for k in places:
         try:
-            entrants.append(_cases(pool.converter(k), k + 1, brief, books, blend))
+            entrants.append(_entered(pool.converter(k), k + 1, brief, books, blend))
         except NoPartError:
             left_out[_NO_PART] += 1
-    entrants.sort(key=lambda cases: (min(case.bound for case in cases), cases[0].place))
     ranked: list[_Found] = []
     searched, exact = 0, True
-    for cases in entrants:
-        # Best bound first: once a bound is above the last place, so are all that follow.
-        if len(ranked) >= top and min(case.bound for case in cases) > ranked[-1].objective * (1 + _TIE):
+    queue = [(one.order(), one) for one in _bounded(entrants)]
+    heapify(queue)
+    while queue:
+        # Best bound first: once a bound is above the last place, so are all that are left.
+        _, entrant = heappop(queue)
+        if len(ranked) >= top and entrant.bound > ranked[-1].objective * (1 + _TIE):
             break
+        if not entrant.relaxed:
+            tightened = entrant.tightened()
+            heappush(queue, (tightened.order(), tightened))
+            continue
         searched += 1
-        found, complete = _searched(cases)
+        found, complete = _searched(entrant)
         exact = exact and complete
         if found is None:
             left_out[_NO_CHOICE] += 1
@@ -168,29 +201,51 @@ def _books(request: PartsRequest) -> tuple[OptionBook, ...]:
     return tuple(OptionBook(request, units, frequency, counts) for frequency in request.frequencies)
 
 
-def _cases(
+def _entered(
     converter: Converter, place: int, brief: Brief, books: Sequence[OptionBook], blend: Blend
-) -> tuple[_Case, ...]:
-    """Pose and relax the problems of one candidate."""
+) -> _Entrant:
+    """Pose the problems of one candidate; nothing is known of them yet."""
     slots = slots_of(converter, brief)
-    problems = [pose(slots, converter.ratio, brief, book, blend) for book in books]
-    return tuple(
-        _Case(converter, place, slots, book, problem, relax(problem))
-        for book, problem in zip(books, problems, strict=True)
-    )
+    cases = tuple(_Case(book, pose(slots, converter.ratio, brief, book, blend)) for book in books)
+    return _Entrant(converter, place, slots, cases, bound=-math.inf)
 
 
-def _searched(cases: tuple[_Case, ...]) -> tuple[_Found | None, bool]:
+def _bounded(entrants: Sequence[_Entrant]) -> list[_Entrant]:
+    """Bound every candidate with the multipliers of a few, which costs next to nothing and holds as well."""
+    seeds = [one.tightened() for one in entrants[:: max(1, len(entrants) // _SEEDS)]]
+    prices = [
+        [one.multipliers for one in at_frequency if one.multipliers is not None]
+        for at_frequency in zip(*(seed.relaxed for seed in seeds), strict=True)
+    ]
+    known = {one.place: one for one in seeds}
+    bounded = []
+    for entrant in entrants:
+        bounds = [
+            case.reported(max((m.bound(case.problem) for m in here), default=-math.inf))
+            for case, here in zip(entrant.cases, prices, strict=True)
+        ]
+        bounded.append(known.get(entrant.place) or replace(entrant, bound=min(bounds)))
+    return bounded
+
+
+def _solved(problem: Problem, relaxed: Relaxed) -> Outcome:
+    """Find the best choice by the dynamic programme, and where that has no room by the integer solver."""
+    outcome = search(problem, relaxed)
+    return outcome if outcome.proven else certify(problem, outcome)
+
+
+def _searched(entrant: _Entrant) -> tuple[_Found | None, bool]:
     """Find the best parts over all frequencies, and say whether the search was exhaustive."""
     best: _Found | None = None
     complete = True
-    for case in sorted(cases, key=lambda one: one.bound):
-        if best is not None and case.bound >= best.objective:
+    pairs = zip(entrant.cases, entrant.relaxed, strict=True)
+    for case, relaxed in sorted(pairs, key=lambda pair: pair[1].bound):
+        if best is not None and case.reported(relaxed.bound) >= best.objective:
             break
-        outcome = search(case.problem, case.relaxed)
+        outcome = _solved(case.problem, relaxed)
         complete = complete and outcome.proven
         if outcome.selection is not None:
-            found = _Found(cases, case, outcome)
+            found = _Found(entrant, case, outcome)
             if best is None or found.objective < best.objective:
                 best = found
     return best, complete
@@ -198,19 +253,20 @@ def _searched(cases: tuple[_Case, ...]) -> tuple[_Found | None, bool]:
 
 def _finished(found: _Found, brief: Brief, blend: Blend) -> Finalist:
     """Prove a candidate's parts at every frequency that could be better, and work out what it does."""
+    entrant, case, best = found.entrant, found.case, found.outcome
     proofs = []
-    case, best = found.case, found.outcome
-    for other in found.cases:
-        if other is case or other.bound < found.objective:
-            outcome = certify(other.problem, best if other is case else search(other.problem, other.relaxed))
+    for other, relaxed in zip(entrant.cases, entrant.relaxed, strict=True):
+        if other is found.case or other.reported(relaxed.bound) < found.objective:
+            known = found.outcome if other is found.case else _solved(other.problem, relaxed)
+            outcome = certify(other.problem, known)
             proofs.append((other, outcome))
             if other.reported(outcome.objective) < case.reported(best.objective):
                 case, best = other, outcome
     assert best.selection is not None  # noqa: S101 -- only candidates with a choice are finalists
     objective = case.reported(best.objective)
     book = case.book
-    fillings = fill(case.slots, case.problem, best.selection, book)
-    ratio = float(case.converter.ratio)
+    fillings = fill(entrant.slots, case.problem, best.selection, book)
+    ratio = float(entrant.converter.ratio)
 
     def at(volts: float) -> Condition:
         return condition(
@@ -224,13 +280,13 @@ def _finished(found: _Found, brief: Brief, blend: Blend) -> Finalist:
         )
 
     return Finalist(
-        converter=case.converter,
-        pool_place=case.place,
+        converter=entrant.converter,
+        pool_place=entrant.place,
         frequency=book.frequency,
         fillings=fillings,
         operating=at(operating_input(brief)),
         exact_impedance=exact_impedance(
-            case.converter,
+            entrant.converter,
             fillings,
             brief,
             request=book.request,
@@ -240,6 +296,6 @@ def _finished(found: _Found, brief: Brief, blend: Blend) -> Finalist:
         conditions=(at(brief.input_minimum), at(brief.input_nominal), at(brief.input_maximum)),
         objective=objective,
         bound=min(objective, *(other.reported(outcome.bound) for other, outcome in proofs)),
-        relaxed=min(other.bound for other in found.cases),
+        relaxed=entrant.bound,
         proven=all(outcome.proven for _, outcome in proofs),
     )

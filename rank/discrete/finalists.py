@@ -6,6 +6,9 @@ import math
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
+from capmuster.rank.cautions import cautions
+from capmuster.rank.quantity import format_quantity
+
 if TYPE_CHECKING:
     from capmuster.enumerate.wiring import Converter
     from capmuster.rank.brief import Brief
@@ -133,8 +136,29 @@ class PartsShortlist:
         )
         if not self.exact:
             return f"{parts}. Some searches were cut short: another candidate might be better."
-        which = "all" if self.screened == self.candidates else f"the first {self.screened} by area of"
-        return (
-            f"{parts}. No other of {which} {self.candidates} candidates has less {self.request.least} "
-            f"than place {len(self.finalists)}."
+        which = (
+            f"all {self.candidates} candidates"
+            if self.screened == self.candidates
+            else f"the {self.screened} candidates looked at, of {self.candidates},"
         )
+        place = len(self.finalists)
+        return f"{parts}. No other of {which} has less {self.request.least} than place {place}."
+
+    @property
+    def cautions(self) -> list[str]:
+        """Dangers and limits that a reader must know, in words."""
+        found = cautions(self.brief)
+        floor = self.brief.efficiency_floor
+        for place, one in enumerate(self.finalists, start=1):
+            worst = min(one.conditions, key=lambda condition: condition.efficiency)
+            if floor is not None and worst.efficiency < floor:
+                found.append(
+                    f"Place {place} reaches {format_quantity(worst.efficiency, '1')} at "
+                    f"{format_quantity(worst.input_voltage, 'V')}, below the brief's floor of "
+                    f"{format_quantity(floor, '1')}."
+                )
+            if any(filling.series > 1 for filling in one.fillings):
+                found.append(
+                    f"Place {place} has parts in series: they need parts around them that share the voltage."
+                )
+        return found

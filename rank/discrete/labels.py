@@ -26,7 +26,7 @@ if TYPE_CHECKING:
     Integers = NDArray[np.int64]
 
 _NARROW: Final = 32
-_WIDE: Final = 100_000
+_WIDE: Final = 20_000
 _BLOCK: Final = 500_000  # labels made at once
 _COMPARED: Final = 12_000  # comparing labels with each other takes the square of their number
 _TIE: Final = 1e-12  # relative
@@ -147,7 +147,7 @@ class _Programme:
     def __init__(self, problem: Problem, multipliers: Multipliers) -> None:
         self._problem = problem
         m = multipliers
-        self._limits = m.limits
+        self._limits = m.limits(problem)
         self._prices = np.array([m.slow, m.fast, m.fixed, m.footprint, m.price])
         self._weight = 1.0 if problem.least == "loss" else problem.share
         self._square = problem.square_current if problem.conducts else 0.0

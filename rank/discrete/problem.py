@@ -160,8 +160,9 @@ def fast_factor(slot: Slot, brief: Brief) -> float:
 def operating_input(brief: Brief) -> float:
     """Input voltage at which losses count [V].
 
-    Fixed-ratio use: the nominal one. Regulated use: the lowest one, where the frequency is highest and the
-    droop must still leave the output.
+    Fixed-ratio use: the nominal one. The droop budget belongs to the lowest one, where bias is less and so is
+    the impedance: a choice that meets it here meets it there. Regulated use: the lowest one, where the
+    frequency is highest and the droop must still leave the output.
     """
     return brief.input_nominal if brief.use == "fixed-ratio" else brief.input_minimum
 

@@ -42,8 +42,10 @@ class Multipliers:
         On the loss by gate drive and output charge [per W].
     footprint, price
         On whole units.
-    limits
-        What they make of the limits, to be subtracted.
+    impedance
+        On the limit of the blend [per ohm].
+    target
+        On the limit of loss or efficiency [per W].
     """
 
     slow: float
@@ -51,7 +53,20 @@ class Multipliers:
     fixed: float
     footprint: float
     price: float
-    limits: float
+    impedance: float
+    target: float
+
+    def limits(self, problem: Problem) -> float:
+        """Return what the prices make of the limits of a problem, to be subtracted from priced costs."""
+        priced = [(self.impedance, problem.impedance_limit), (self.target, problem.limit)]
+        # What is made least has its own value as a price, and a budget only what is beyond that.
+        for price, budget, name in (
+            (self.footprint, problem.footprint, "footprint"),
+            (self.price, problem.price, "price"),
+        ):
+            if budget is not None:
+                priced.append((price - (problem.least == name), float(budget)))
+        return math.fsum(price * limit for price, limit in priced if price)
 
     def cost(self, problem: Problem) -> list[Floats]:
         """Priced cost of every option of each group."""
@@ -65,9 +80,13 @@ class Multipliers:
         ]
 
     def bound(self, problem: Problem) -> float:
-        """Return a value that no choice within the limits goes below."""
+        """Return a value that no choice within the limits goes below.
+
+        The prices may come from another problem with the same request and brief: what is made least, current
+        and blend are the same.
+        """
         costs = zip(self.cost(problem), problem.groups, strict=True)
-        return math.fsum(len(g.names) * float(c.min()) for c, g in costs) - self.limits
+        return math.fsum(len(g.names) * float(c.min()) for c, g in costs) - self.limits(problem)
 
 
 @dataclass(frozen=True, slots=True)
@@ -167,16 +186,14 @@ def _solved(problem: Problem, angles: Floats) -> Relaxed:
     per_unit = {b.name: float(price) / b.unit for b, price in zip(budgets, on_budgets, strict=False)}
     # What the tangents weigh beyond the conduction loss is the price of the impedance limit.
     beyond = max(0.0, float(on_tangents.sum()) - on_loss * problem.conducts)
-    of_limits = [per_unit[b.name] * b.most for b in budgets] + (
-        [] if least_loss else [on_loss * problem.limit]
-    )
     multipliers = Multipliers(
         slow=square * float(on_tangents @ by_slow),
         fast=square * float(on_tangents @ by_fast),
         fixed=on_loss * (1.0 if least_loss else problem.share),
         footprint=per_unit.get("footprint", 0.0) + (problem.least == "footprint"),
         price=per_unit.get("price", 0.0) + (problem.least == "price"),
-        limits=math.fsum([beyond * highest if beyond else 0.0, *of_limits]),
+        impedance=beyond * square,
+        target=0.0 if least_loss else on_loss,
     )
     share = np.asarray(result.x, dtype=np.float64)[:-1]
     return Relaxed(multipliers.bound(problem), multipliers, float(share @ slow), float(share @ fast))

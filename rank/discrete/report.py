@@ -239,6 +239,7 @@ def document(found: PartsShortlist) -> dict[str, object]:
         "provenance": provenance(found),
         "settings": dict(settings(found)),
         "certificate": found.certificate,
+        "cautions": found.cautions,
         "search": {
             "candidates": found.candidates,
             "screened": found.screened,
