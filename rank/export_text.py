@@ -93,7 +93,7 @@ def _source(element: Element) -> str:
     return "" if element.source is None else " / ".join(f"{volts:.3g}" for volts in element.source)
 
 
-_TEXTUAL = {"id", "ratio", "families", "wiring", "pareto"}
+_TEXTUAL = {"id", "ratio", "families", "wiring", "pareto", "holds_output", "overstressed"}
 _NOT_IN_MARKDOWN = {"wiring", "slow_limit_ohm", "fast_limit_ohm"}
 
 
@@ -108,7 +108,7 @@ def cell(column: Column, value: object) -> str:
     if isinstance(value, bool):
         return "yes" if value else ""
     if column.unit == "1":
-        return f"{100 * float(str(value)):.1f}"
+        return f"{round(100 * float(str(value)), 1) + 0.0:.1f}"  # no negative zero
     if isinstance(value, float):
         return f"{value:.4g}"
     return str(value)

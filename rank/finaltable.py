@@ -44,6 +44,22 @@ COLUMNS = (
 )
 """Columns of `finalist_frame`, in their order."""
 
+_IN_SHORTLIST = (
+    "exact_area_mm2",
+    "exact_place",
+    "exact_ohm",
+    "blend_ohm",
+    "correction",
+    "ratio_shift",
+    "holds_output",
+    "highest_ripple_V",
+    "inrush_A",
+    "start_up_stress",
+    "overstressed",
+)
+EXACT_COLUMNS = tuple(column for column in COLUMNS if column.name in _IN_SHORTLIST)
+"""Those that a shortlist shows beside its own."""
+
 
 def finalist_frame(best: Sequence[Finalist]) -> pd.DataFrame:
     """Write finalists as a table.
@@ -65,7 +81,7 @@ def finalist_frame(best: Sequence[Finalist]) -> pd.DataFrame:
         "place": np.arange(1, len(best) + 1),
         "id": [one.converter.id for one in best],
         "given_area_mm2": [one.given_area for one in best],
-        "exact_area_mm2": areas,
+        "exact_area_mm2": np.where(np.isfinite(areas), areas, np.nan),
         "exact_place": np.argsort(np.argsort(areas, kind="stable"), kind="stable") + 1,
         "slow_limit_ohm": [float(one.impedance.slow[0]) for one in best],
         "fast_limit_ohm": [float(one.impedance.fast[0]) for one in best],

@@ -16,6 +16,8 @@ from capmuster.rank.certify import certify
 from capmuster.rank.columns import COLUMNS, Column, columns_of
 from capmuster.rank.elements import Element, elements_of
 from capmuster.rank.evaluation import ceiling, efficiency
+from capmuster.rank.finalist import finalists
+from capmuster.rank.finaltable import EXACT_COLUMNS, finalist_frame
 from capmuster.rank.lossvalues import loss_values
 from capmuster.rank.pool import Pool, gather
 from capmuster.rank.structs import rows_of
@@ -30,6 +32,7 @@ if TYPE_CHECKING:
     from capmuster.rank.brief import Brief
     from capmuster.rank.certify import Certificate
     from capmuster.rank.exactchoice import ExactChoice
+    from capmuster.rank.finalist import Finalist
     from capmuster.rank.switching import SwitchNetwork
 
 __all__ = ["COLUMNS", "Column", "Included", "Shortlist", "shortlist"]
@@ -94,7 +97,13 @@ class Shortlist:
     @property
     def columns(self) -> tuple[Column, ...]:
         """Columns of the table, in their order."""
-        return columns_of(self.brief)
+        *own, wiring = columns_of(self.brief)
+        return (*own, *EXACT_COLUMNS, wiring)
+
+    @cached_property
+    def exact(self) -> tuple[Finalist, ...]:
+        """The rows of the table on their exact impedance, with their stress in use and at start-up."""
+        return finalists(self)
 
     @cached_property
     def best_family_place(self) -> int | None:
@@ -167,6 +176,8 @@ class Shortlist:
         if e.sized is not None:
             ideal = np.abs(ratio) * self.brief.input_nominal
             values.update(loss_values(rows_of(e.sized, places), area, ideal))
+        exact = finalist_frame(self.exact)
+        values.update({column.name: exact[column.name] for column in EXACT_COLUMNS})
         frame = pd.DataFrame({column.name: values[column.name] for column in self.columns})
         frame.attrs["units"] = {column.name: column.unit for column in self.columns}
         frame.attrs.update(self.provenance)

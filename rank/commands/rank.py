@@ -8,6 +8,8 @@ from typing import TYPE_CHECKING
 import click
 
 if TYPE_CHECKING:
+    from collections.abc import Mapping
+
     from capmuster.rank.brief import Brief
     from capmuster.rank.shortlist import Shortlist
 
@@ -48,7 +50,22 @@ _WITH_LOSSES = {
     "pareto": "Pareto\nset",
     "families": "families",
 }
+_EXACT = {
+    "place": "place",
+    "id": "id",
+    "area_mm2": "model",
+    "exact_area_mm2": "exact",
+    "exact_place": "place by\nexact area",
+    "blend_ohm": "blend",
+    "exact_ohm": "exact",
+    "ratio_shift": "ratio\nshift [%]",
+    "highest_ripple_V": "ripple\n[V]",
+    "inrush_A": "inrush\n[A]",
+    "start_up_stress": "start-up\nstress [%]",
+}
 _GROUPS = (
+    ("area_mm2", "exact_area_mm2", "area [mm²]"),
+    ("blend_ohm", "exact_ohm", "R_out [Ω]"),
     ("efficiency_minimum", "efficiency_maximum", "efficiency [%] at V_in"),
     ("ceiling_minimum", "ceiling_maximum", "ceiling [%] at V_in"),
 )
@@ -60,6 +77,11 @@ _LEGEND = (
     "V_block: highest voltage that a switch must block."
 )
 
+_EXACT_LEGEND = (
+    "Re-sized on the exact output impedance, plate parasitics and series resistance included.\n"
+    "Ratio shift: by plate parasitics at no load. Start-up stress: highest voltage over rating while the\n"
+    "converter starts from empty capacitors at the highest input; above 100 % limit the rise of the input."
+)
 _LOSS_LEGEND = (
     "Loss, frequency, R_out and density (output power per area) at the nominal input and full load.\n"
     "Floating drives: switches whose gates need a supply of their own. Each loss: --format csv, or export."
@@ -116,8 +138,10 @@ def _write_table(found: Shortlist) -> None:
         click.echo(f"{name:20} {value}")
     click.echo()
     if len(found):
-        click.echo(_table(found))
+        click.echo(_table(found, _shown(found.brief)))
         click.echo(f"\n{_LOSS_LEGEND if found.brief.counts_losses else _LEGEND}\n")
+        click.echo(_table(found, _EXACT))
+        click.echo(f"\n{_EXACT_LEGEND}\n")
     for line in verdict(found):
         click.echo(line)
     for text in found.cautions:
@@ -134,11 +158,11 @@ def _shown(brief: Brief) -> dict[str, str]:
     return dict(items)
 
 
-def _table(found: Shortlist) -> str:
+def _table(found: Shortlist, headings: Mapping[str, str]) -> str:
     from capmuster.rank.export_text import cell  # noqa: PLC0415
     from capmuster.rank.rows import figures, prefixed, text_table  # noqa: PLC0415
 
-    shown = dict(_shown(found.brief))
+    shown = dict(headings)
     names = list(shown)
     column_of = {column.name: column for column in found.columns}
     cells = []
@@ -157,5 +181,9 @@ def _table(found: Shortlist) -> str:
         list(shown.values()),
         list(zip(*cells, strict=True)),
         [name not in _FLUSH_LEFT for name in names],
-        [(names.index(first), names.index(last), text) for first, last, text in _GROUPS if first in shown],
+        [
+            (names.index(first), names.index(last), text)
+            for first, last, text in _GROUPS
+            if first in shown and last in shown
+        ],
     )

@@ -23,7 +23,8 @@ _LEAST_SHARE = 0.05  # [%] that one decimal shows
 _PLAIN = (1e-4, 1e6)
 _SHARES = {"capacitor_utilisation", "switch_utilisation", "output_evenness"}
 _NAMES = {"id", "ratio"}
-_TEXTS = {"families", "wiring"}
+_TEXTS = {"families", "wiring", "overstressed"}
+_FLAGS = {"pareto", "holds_output"}
 _SHOWN = {
     "place",
     "id",
@@ -32,6 +33,7 @@ _SHOWN = {
     "flying_capacitors",
     "switches",
     "area_mm2",
+    "exact_area_mm2",
     "efficiency_minimum",
     "efficiency_nominal",
     "efficiency_maximum",
@@ -40,6 +42,7 @@ _SHOWN = {
 }
 _SHOWN_WITHOUT_LOSSES = {
     "impedance_ohm",
+    "exact_ohm",
     "capacitor_utilisation",
     "switch_utilisation",
 }
@@ -95,7 +98,7 @@ def page_table(columns: Sequence[Column], frame: pd.DataFrame) -> Table:
 
 
 def _kind(name: str) -> Literal["text", "name", "number", "share", "flag"]:
-    if name == "pareto":
+    if name in _FLAGS:
         return "flag"
     if name in _NAMES:
         return "name"
@@ -115,7 +118,7 @@ def _common_power(unit: str, columns: Sequence[Column], frame: pd.DataFrame) -> 
 
 
 def _cell(column: Column, value: object, power: int) -> Cell:
-    if column.name == "pareto":
+    if column.name in _FLAGS:
         return Cell("yes" if value else "", float(bool(value)))
     if column.name in _NAMES | _TEXTS:
         return Cell(str(value), float(Fraction(str(value))) if column.name == "ratio" else None)
@@ -124,7 +127,7 @@ def _cell(column: Column, value: object, power: int) -> Cell:
         return Cell("")
     if column.unit == "1":
         share = 100.0 * number
-        text = f"{share:.1e}" if 0 < share < _LEAST_SHARE else f"{share:.1f}"
+        text = f"{share:.1e}" if 0 < share < _LEAST_SHARE else f"{round(share, 1) + 0.0:.1f}"
         return Cell(text, share)
     if number.is_integer() and not column.unit:
         return Cell(f"{number:.0f}", number)
