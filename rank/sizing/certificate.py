@@ -77,7 +77,7 @@ def cannot_be_met(problem: Problem, values: Floats) -> NDArray[np.bool_]:
             _, at = problem.conditions(values)
             by_slow = at.slow * np.exp(case.log_f_most)
             by_fast = at.fast_s[0] if len(at.fast_s) == 1 else at.fast_s[0] * at.duty_1
-            values[names.index("angle")] = np.log(by_fast / by_slow)
+            values[names.index("steep")] = np.log(by_fast / by_slow)
             k = names.index("impedance")
             values[k] = np.log(np.hypot(by_slow, by_fast) / problem.reference[k])
         elif "log_f" in names:

@@ -9,7 +9,8 @@ sin phi y``. The unknown `angle` is log tan phi.
 s_k(y)`` with ``s_k = sqrt(R_k^2 - y^2)``. The mean frequency is ``f = X h(y)`` with ``h = sum_k w_k / s_k``,
 and the hardest point, of impedance R_0, must do with the highest frequency: ``hypot(X / f_most, y) <= R_0``.
 Both regions are convex, the first because a harmonic mean of concave functions is concave. `angle` is log tan
-phi with ``y = R_0 sin phi``, and `rate` the logarithm of what log f costs per price of loss.
+phi with ``y = R_k sin phi`` for the least R_k, `rate` the logarithm of what log f costs per price of loss,
+and `steep` that of ``y f_most / X``, which shares the price of the hardest point between the limits.
 """
 
 from __future__ import annotations
@@ -113,12 +114,13 @@ class Held:
         self.limit = case.impedance - u.current * case.lead
         log_cos, log_sin = polar(u.free["angle"])
         cos, sin = exp(log_cos), exp(log_sin)
-        self.fast_limit = self.limit * sin
-        hardest = self.limit * cos
+        least = case.wanted.min(axis=0) - u.current * case.lead
+        self.fast_limit = least * sin
+        slowest = least * cos
         h, slope, lead = Dual(0.0), Dual(0.0), Dual(0.0)
         for wanted, share in zip(case.wanted, case.share, strict=True):
             R = wanted - u.current * case.lead
-            inverse = 1.0 / ((R - self.limit) * (R + self.limit) + hardest * hardest)
+            inverse = 1.0 / ((R - least) * (R + least) + slowest * slowest)
             part = share * sqrt(inverse)
             h, cubic = h + part, part * inverse
             slope = slope + cubic
@@ -129,9 +131,10 @@ class Held:
         f, most = exp(u.log_f), np.exp(case.log_f_most)
         falling = rate * h / f
         by_fast = rate * (slope * self.fast_limit / h)
-        by_hard = hard * cos / most
+        log_cos, log_sin = polar(u.free["steep"])
+        by_hard = hard * exp(log_cos) / most
         self.log_slow = log(falling + by_hard)
-        self.log_fast = log(by_fast + hard * sin)
+        self.log_fast = log(by_fast + hard * exp(log_sin))
         self.lead_price = rate * lead / h + hard
         self.most = most
         self.offset = -(rate.value + by_fast.value * self.fast_limit.value + hard.value * self.limit.value)
@@ -146,6 +149,7 @@ class Held:
         log_X = log(whole.X)
         return {
             "angle": log(self.fast_limit) - log(whole.y),
+            "steep": u.free["steep"] - log(whole.y) + log_X - np.log(self.most),
             "rate": u.free["rate"] - _log(whole.cycling),
             "log_f": u.log_f - log_X - log(self.h),
             "impedance": log(self.limit) - log(hypot(whole.X / self.most, whole.y)),

@@ -70,6 +70,7 @@ def unknown_names(case: Case, *, duty_free: bool) -> tuple[str, ...]:
     by_loss, by_density = case.objective is Objective.LOSS, case.objective is Objective.DENSITY
     there = {
         "angle": True,
+        "steep": case.held,
         "rate": case.held,
         "log_f": case.held or bool(np.any(case.log_f_most > case.log_f_least)),
         "loss": not by_loss,
@@ -214,8 +215,8 @@ def _guess_held(case: Case, lumped: _Lumped, values: dict[str, Floats], referenc
     """Guess unknowns and prices where the output is held by frequency.
 
     With three quarters of the hardest impedance by the fast limit the switches are fixed, and the mean
-    frequency is X h: the loss of the capacitors does not depend on their area, that of the switches grows with
-    X.
+    frequency is X h: the loss of the capacitors does not depend on their area, that of the switches grows
+    with X.
     """
     by_loss = case.objective is Objective.LOSS
     least, most = np.exp(case.log_load_least), np.exp(case.log_load_most)
@@ -242,7 +243,9 @@ def _guess_held(case: Case, lumped: _Lumped, values: dict[str, Floats], referenc
     push = np.maximum(X * h * per_cycle - lumped.leakage_c * area_c, 0.1 * cycling)
     nu = np.ones_like(area_c) if by_loss else area_c / push
     theta = push / area_c if by_loss else np.ones_like(area_c)
-    values["angle"] = np.full_like(X, np.log(_STEEP / np.sqrt(1.0 - _STEEP**2)))
+    least_wanted = case.wanted.min(axis=0) - case.lead * load
+    values["angle"] = np.log(y / np.sqrt(least_wanted**2 - y**2))
+    values["steep"] = np.log(y * np.exp(case.log_f_most) / X)
     values["rate"], values["log_f"], values["log_load"] = np.log(cycling), np.log(X * h), np.log(load)
     by_switches = theta * area_s + nu * (X * h * lumped.cycle_s + lumped.leakage_s) * area_s
     rest = by_switches - nu * cycling * y * slope / h

@@ -80,18 +80,9 @@ def seconds_for(model, task):
     return best, ours
 
 
-@pytest.mark.parametrize(
-    ("name", "most"),
-    [
-        ("least loss", 1.0),
-        ("least area", 1.0),
-        ("greatest density", 1.0),
-        ("least loss, impedance limited", 1.0),
-        ("least area, output held by frequency", 1.5),
-    ],
-)
-def test_a_hundred_thousand_candidates(name, most):
-    """Every candidate to a gap of 1e-9 or proven infeasible, in seconds of one core; two are allowed."""
+@pytest.mark.parametrize("name", tasks(1.0, 1.0))
+def test_a_hundred_thousand_candidates(name):
+    """Every candidate to a gap of 1e-9 or proven infeasible, in 1 s of one core; two are allowed."""
     model, current, area = candidates(1, MANY)
     seconds, ours = seconds_for(model, tasks(current, area)[name])
     counts = np.bincount(ours.status, minlength=3)
@@ -100,7 +91,7 @@ def test_a_hundred_thousand_candidates(name, most):
     assert worst <= 1e-9
     assert counts[Status.OPTIMAL] > MANY // 2
     assert counts[Status.UNRESOLVED] == 0
-    assert seconds < most
+    assert seconds < 1.0
 
 
 class Convex:
@@ -188,6 +179,7 @@ class Convex:
         return np.exp(found.fun), self.limit(found.x)[0]
 
 
+@pytest.mark.filterwarnings("ignore:delta_grad")
 @pytest.mark.parametrize(
     ("method", "name", "few", "times"),
     [
