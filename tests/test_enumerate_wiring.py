@@ -102,7 +102,8 @@ def test_values_cannot_be_changed_and_survive_copying():
     _ = converter.balance, converter.id
     with pytest.raises(dataclasses.FrozenInstanceError):
         converter.words = ()
-    for same in (pickle.loads(pickle.dumps(converter)), copy.deepcopy(converter), copy.copy(converter)):  # noqa: S301 -- our own bytes
+    pickled = pickle.loads(pickle.dumps(converter))  # noqa: S301 -- our own bytes
+    for same in (pickled, copy.deepcopy(converter), copy.copy(converter)):
         assert same == converter
         assert (same.balance, same.id) == (converter.balance, converter.id)
     cell = converter.cell
