@@ -10,125 +10,23 @@ import numpy as np
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
-from plain_circuit import steady
+from parts_cases import BRIEF, HALVER, NOTHING, capacitor, cases, posed, reported, transistor
 from plain_parts import all_choices
 
 from capmuster.enumerate.errors import CapmusterError
 from capmuster.enumerate.wiring import Converter
 from capmuster.rank.brief import load_brief
-from capmuster.rank.circuit import circuit_of
 from capmuster.rank.discrete.blends import LOOP, QUADRATIC
 from capmuster.rank.discrete.certify import certify
-from capmuster.rank.discrete.design import condition, exact_impedance, fill
-from capmuster.rank.discrete.labels import Outcome, search
-from capmuster.rank.discrete.options import NoPartError, OptionBook, Units
-from capmuster.rank.discrete.problem import pose, resolved
+from capmuster.rank.discrete.design import fill
+from capmuster.rank.discrete.labels import search
+from capmuster.rank.discrete.options import NoPartError
+from capmuster.rank.discrete.problem import resolved
 from capmuster.rank.discrete.relaxed import relax
-from capmuster.rank.discrete.slots import slots_of
-from capmuster.rank.parts import CapacitorPart, Stock, SwitchPart
+from capmuster.rank.parts import Stock
 from capmuster.rank.parts_request import PartsRequest
 
-BRIEF = replace(load_brief("pump-shelf"), efficiency_floor=None, parts=None)
-HALVER = Converter.parse("I-O/O-G")
-THIRD = Converter.parse("I-a/O-G a-O/O-G")
-NOTHING = Outcome(None, None, math.inf, math.inf, proven=False)
-
-
-def capacitor(name, nominal, rating=50.0, *, footprint=10.0, price=0.1, **others):
-    figures = {
-        "tolerance": 0.1,
-        "bias": ((0.0, 1.0), (rating / 2, 0.7), (rating, 0.4)),
-        "series_resistance": 3e-3,
-    }
-    return CapacitorPart(
-        name, "X7R", "1210", nominal, rating=rating, footprint=footprint, price=price, **{**figures, **others}
-    )
-
-
-def transistor(name, resistance, rating=60.0, *, footprint=15.0, price=0.5, **others):
-    figures = {"drive": 4.5, "rise": 0.004, "gate_charge": 10e-9, "output_charge": 20e-9}
-    return SwitchPart(
-        name, "3x3", rating, resistance, footprint=footprint, price=price,
-        **{**figures, "output_charge_voltage": 30.0, "output_charge_exponent": 0.5, **others},
-    )  # fmt: skip
-
-
-def posed(converter, brief, request, blend=QUADRATIC, *, pruned=True):
-    """Pose a problem at the first frequency of a resolved request."""
-    counts = (
-        request.footprint is not None or request.least == "footprint",
-        request.price is not None or request.least == "price",
-    )
-    book = OptionBook(request, Units.of(request), request.frequencies[0], counts)
-    slots = slots_of(converter, brief)
-    return slots, book, pose(slots, converter.ratio, brief, book, blend, pruned=pruned)
-
-
-def reported(problem, book, value):
-    if problem.least == "loss":
-        return value + problem.offset
-    return value / (book.units.per_mm2 if problem.least == "footprint" else book.units.per_eur)
-
-
 # Everything against trying everything.
-
-
-@st.composite
-def stocks(draw):
-    whole = st.integers
-    ceramics = tuple(
-        capacitor(
-            f"c{k}",
-            draw(whole(2, 120)) * 1e-6,
-            draw(st.sampled_from([20.0, 25.0, 35.0, 50.0, 100.0])) if k else 100.0,
-            footprint=draw(whole(30, 200)) / 10,
-            price=draw(whole(1, 60)) / 100,
-            series_resistance=draw(whole(0, 9)) * 1e-3,
-            tolerance=draw(st.sampled_from([0.0, 0.05, 0.2])),
-        )
-        for k in range(draw(whole(1, 3)))
-    )
-    transistors = tuple(
-        transistor(
-            f"n{k}",
-            draw(whole(1, 30)) * 1e-3,
-            draw(st.sampled_from([25.0, 40.0, 60.0, 100.0])) if k else 100.0,
-            footprint=draw(whole(50, 400)) / 10,
-            price=draw(whole(10, 200)) / 100,
-            gate_charge=draw(whole(0, 120)) * 1e-9,
-            output_charge=draw(whole(0, 300)) * 1e-9,
-        )
-        for k in range(draw(whole(1, 2)))
-    )
-    return Stock(("drawn", "drawn"), ceramics, transistors)
-
-
-@st.composite
-def cases(draw):
-    """Draw a converter, its brief and a resolved request whose limits bind now and then."""
-    converter = draw(st.sampled_from([HALVER, THIRD]))
-    brief = replace(BRIEF, current=draw(st.sampled_from([0.05, 1.0, 8.0, 20.0])))
-    if draw(st.booleans()):
-        share = draw(st.sampled_from([0.8, 0.9, 0.98]))
-        brief = replace(brief, use="regulated", required=share * float(converter.ratio) * brief.input_minimum)
-    least = draw(st.sampled_from(["loss", "footprint", "price"]))
-    target = {} if least == "loss" else {"efficiency": draw(st.sampled_from([0.5, 0.8, 0.9, 0.96]))}
-    request = PartsRequest(
-        draw(stocks()),
-        least=least,
-        footprint=draw(st.sampled_from([95.0, 150.5, 400.0, 1000.0] + [None, None] * (least != "loss"))),
-        price=draw(st.sampled_from([None, None, None, 4.0, 9.99])),
-        temperature=draw(st.sampled_from([25.0, 110.0])),
-        capacitance=draw(st.sampled_from(["least", "nominal"])),
-        parallel_capacitors=3 if converter is HALVER else 2,
-        parallel_switches=2 if converter is HALVER else 1,
-        series=draw(st.sampled_from([1, 2])),
-        driver_footprint=draw(st.sampled_from([0.0, 2.5])),
-        driver_price=draw(st.sampled_from([0.0, 0.125])),
-        frequencies=(draw(st.sampled_from([20e3, 120e3, 1e6])),),
-        **target,
-    )  # fmt: skip
-    return converter, brief, resolved(request, brief)
 
 
 @given(case=cases(), blend=st.sampled_from([QUADRATIC, LOOP]))
@@ -353,91 +251,6 @@ def test_the_brief_fills_in_what_a_request_leaves_open():
     assert ranged == pytest.approx([30e3, 42.4e3, 60e3, 84.9e3, 120e3], rel=2e-3)
     with pytest.raises(CapmusterError, match="3 interleaved copies"):
         resolved(request, replace(BRIEF, copies=3))
-
-
-# What a filled converter does.
-
-
-@given(case=cases(), volts=st.floats(44, 56))
-@settings(max_examples=60)
-def test_losses_are_the_difference_of_input_and_output_power(case, volts):
-    converter, brief, request = case
-    slots, book, problem = posed(converter, brief, request)
-    outcome = search(problem)
-    if outcome.selection is None:
-        return
-    fillings = fill(slots, problem, outcome.selection, book)
-    ratio = float(converter.ratio)
-    at = condition(
-        fillings,
-        ratio,
-        brief,
-        request=request,
-        frequency=book.frequency,
-        input_voltage=volts,
-        blend=QUADRATIC,
-    )
-    taken = ratio * volts * brief.current + at.losses.load_free
-    given_out = at.output_voltage * brief.current
-    assert at.losses.total == pytest.approx(taken - given_out, rel=1e-9, abs=1e-12)
-    assert at.efficiency == pytest.approx(given_out / taken, rel=1e-12)
-    # Part by part at the operating input it is what the search added up.
-    held = brief.use == "regulated"
-    operating = condition(
-        fillings,
-        ratio,
-        brief,
-        request=request,
-        frequency=book.frequency,
-        input_voltage=brief.input_minimum if held else brief.input_nominal,
-        blend=QUADRATIC,
-    )
-    totals = problem.totals(outcome.selection)
-    assert operating.losses.total == pytest.approx(
-        problem.offset + problem.conduction(totals) + totals.fixed, rel=1e-9
-    )
-    if not held:
-        # Less bias at the least input: the droop budget, checked at the nominal one, is on the safe side.
-        droop = condition(
-            fillings,
-            ratio,
-            brief,
-            request=request,
-            frequency=book.frequency,
-            input_voltage=brief.input_minimum,
-            blend=QUADRATIC,
-        )
-        assert droop.output_voltage >= brief.required * (1 - 1e-9)
-
-
-@pytest.mark.parametrize("duty", [0.5, 0.4])
-@pytest.mark.parametrize("code", ["O-G/a-O O-G/b-a O-G/I-b", "O-G/a-O a-O/O-G a-G/I-a"])
-def test_impedance_against_a_circuit_that_is_switched(code, duty):
-    # The oracle knows node equations and matrix exponentials only (tests/plain_circuit.py).
-    converter, brief = Converter.parse(code), replace(BRIEF, objective="least-loss", duty=duty)
-    request = resolved(load_brief("pump-shelf").parts, brief)
-    slots, book, problem = posed(converter, brief, request)
-    fillings = fill(slots, problem, search(problem).selection, book)
-    n = converter.n
-    values = [one.value(request, 48.0) for one in fillings]
-    esr = [one.part.series_resistance * one.series / one.parallel for one in fillings[:n]]
-    circuit = circuit_of(converter, values[:n], values[n:], series_resistances=esr, duty=duty)
-    at = condition(
-        fillings, 0.25, brief, request=request, frequency=120e3, input_voltage=48.0, blend=QUADRATIC
-    )
-
-    def switched(frequency):
-        current = steady(circuit, frequency, (48.0, 11.9))["currents"][1]
-        return abs(0.1 / current)
-
-    lead = brief.technology.wiring_resistance
-    exact = exact_impedance(converter, fillings, brief, request=request, frequency=120e3, input_voltage=48.0)
-    assert exact - lead == pytest.approx(switched(120e3), rel=1e-6)
-    assert switched(120.0) * 120 == pytest.approx(at.slow * 120e3, rel=1e-3)  # slow-switching limit
-    assert switched(120e6) == pytest.approx(at.fast, rel=1e-3)  # fast-switching limit
-    # Between the loop blend and the sum of both limits (charge takes the way of least loss).
-    assert float(LOOP.value(at.slow, at.fast)) <= (exact - lead) * (1 + 1e-9)
-    assert exact - lead <= at.slow + at.fast
 
 
 def test_alike_elements_are_one_group_and_all_get_parts():

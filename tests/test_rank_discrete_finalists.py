@@ -13,6 +13,7 @@ from fractions import Fraction
 from pathlib import Path
 
 import numpy as np
+import openpyxl
 import pytest
 from command import environment, run
 from scipy.optimize import Bounds, LinearConstraint, milp
@@ -60,12 +61,15 @@ def alone(brief, request, converter):
 @pytest.mark.parametrize(
     "changes",
     [
-        {"footprint": 420.0},
-        {"footprint": 420.0, "price": 11.0, "frequencies": (80e3, 160e3)},
-        {"least": "footprint", "footprint": None, "efficiency": 0.98},
-        {"least": "price", "footprint": 500.0, "loss": 2.5},
+        pytest.param({"footprint": 420.0}, id="loss"),
+        pytest.param({"least": "footprint", "footprint": None, "efficiency": 0.98}, id="footprint"),
+        pytest.param(
+            {"footprint": 420.0, "price": 11.0, "frequencies": (80e3, 160e3)},
+            id="two budgets and frequencies",
+            marks=pytest.mark.long,
+        ),
+        pytest.param({"least": "price", "footprint": 500.0, "loss": 2.5}, id="price", marks=pytest.mark.long),
     ],
-    ids=["loss", "two budgets and frequencies", "footprint", "price"],
 )
 def test_screening_loses_no_finalist(changes):
     request = replace(SHELF.parts, **changes)
@@ -247,6 +251,43 @@ def test_the_command_says_what_was_asked_and_what_is_proven(capsys, quarters):
     assert "junctions at       100 degC" in text
     assert "proven best" in text
     assert "has less price than place 1." in text
+
+
+def test_files_hold_what_the_command_prints_and_the_same_bytes_each_time(capsys, quarters, tmp_path):
+    names = ("parts.csv", "parts.json", "parts.xlsx")
+    first, second = tmp_path / "first", tmp_path / "second"
+    for folder in (first, second):
+        folder.mkdir()
+        targets = [word for name in names for word in ("--to", str(folder / name))]
+        status, text, _ = call(capsys, quarters, "--top", "2", *targets)
+        assert status == 0
+        assert text.count("Written: ") == 3
+        assert "proven best" in text
+    for name in names:
+        assert (first / name).read_bytes() == (second / name).read_bytes()
+    printed = call(capsys, quarters, "--top", "2", "--format", "csv", "--elements")[1]
+    assert (first / "parts.csv").read_text(encoding="utf-8") == printed
+    printed = call(capsys, quarters, "--top", "2", "--format", "json")[1]
+    assert json.loads((first / "parts.json").read_text(encoding="utf-8")) == json.loads(printed)
+    book = openpyxl.load_workbook(first / "parts.xlsx")
+    assert book.sheetnames == ["Finalists", "Parts", "Settings"]
+    header, *rows = book["Parts"].iter_rows(values_only=True)
+    assert len(header) == len(ELEMENT_COLUMNS)
+    part = header.index("part")
+    listed = (first / "parts.csv").read_text(encoding="utf-8")
+    assert [row[part] for row in rows] == [line["part"] for line in csv.DictReader(io.StringIO(listed))]
+    notes = dict(row[:2] for row in book["Settings"].iter_rows(values_only=True))
+    assert notes["certificate"] == json.loads(printed)["certificate"]
+
+
+def test_nothing_is_written_where_one_file_cannot_be(capsys, quarters, tmp_path):
+    complaints = {"no.pdf": "unknown suffix", "none/a.csv": "does not exist", "a.csv": "named twice"}
+    for other, complaint in complaints.items():
+        targets = ("--to", str(tmp_path / "a.csv"), "--to", str(tmp_path / other))
+        status, text, error = call(capsys, quarters, *targets)
+        assert (status, text) == (2, "")
+        assert complaint in error
+        assert list(tmp_path.iterdir()) == []
 
 
 @pytest.mark.parametrize(

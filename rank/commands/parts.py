@@ -22,7 +22,7 @@ _TEXTUAL = {"id", "ratio", "families", "proven"}
 
 @click.command(
     name="parts",
-    epilog="\b\nExamples:\n  capmuster parts pump-shelf\n"
+    epilog="\b\nExamples:\n  capmuster parts pump-shelf\n  capmuster parts pump-shelf --to parts.xlsx\n"
     "  capmuster parts pump-shelf --least footprint --efficiency '98 %' --format json",
 )
 @click.argument("brief")
@@ -38,6 +38,13 @@ _TEXTUAL = {"id", "ratio", "families", "proven"}
 @click.option("--include", multiple=True, metavar="WIRING", help="Rank this wiring (or id) with the rest.")
 @click.option("--elements", is_flag=True, help="With csv: one row per capacitor and switch.")
 @click.option(
+    "--to",
+    "paths",
+    multiple=True,
+    metavar="FILE",
+    help="Write files instead: .csv (a row per element), .json or .xlsx; repeat.",
+)
+@click.option(
     "--format",
     "form",
     type=click.Choice(["table", "csv", "json"]),
@@ -46,7 +53,14 @@ _TEXTUAL = {"id", "ratio", "families", "proven"}
     help="How rows are written.",
 )
 def command(
-    brief: str, top: int, include: tuple[str, ...], form: str, *, elements: bool, **changes: object
+    brief: str,
+    top: int,
+    include: tuple[str, ...],
+    form: str,
+    *,
+    elements: bool,
+    paths: tuple[str, ...],
+    **changes: object,
 ) -> None:
     """Choose the discrete parts of the best converters for BRIEF, with proof.
 
@@ -58,10 +72,19 @@ def command(
     from capmuster.rank.discrete.choose import choose_parts  # noqa: PLC0415
     from capmuster.rank.lookup import find_converter  # noqa: PLC0415
 
+    if paths:
+        from capmuster.rank.discrete.files import check_parts_targets  # noqa: PLC0415
+
+        check_parts_targets(paths)
     job = load_brief(brief)
     request = _changed(_request(job), changes)
     found = choose_parts(job, request, top=top, include=[find_converter(text) for text in include])
-    if form == "json":
+    if paths:
+        from capmuster.rank.discrete.files import write_parts  # noqa: PLC0415
+
+        write_parts(found, paths)
+        click.echo("\n".join([found.certificate, *(f"Written: {path}" for path in paths)]))
+    elif form == "json":
         from capmuster.rank.discrete.report import document  # noqa: PLC0415
         from capmuster.rank.rows import json_text  # noqa: PLC0415
 
@@ -119,19 +142,16 @@ def _changed(request: PartsRequest, changes: dict[str, object]) -> PartsRequest:
 
 
 def _write_csv(found: PartsShortlist, *, elements: bool) -> None:
+    from capmuster.rank.discrete.files import rows_as_csv  # noqa: PLC0415
     from capmuster.rank.discrete.report import (  # noqa: PLC0415
         COLUMNS,
         ELEMENT_COLUMNS,
         candidate_rows,
         element_rows,
-        provenance,
     )
-    from capmuster.rank.rows import csv_text  # noqa: PLC0415
 
     columns, rows = (ELEMENT_COLUMNS, element_rows(found)) if elements else (COLUMNS, candidate_rows(found))
-    origin = provenance(found)
-    texts = [["" if cell is None else str(cell) for cell in (*row, *origin.values())] for row in rows]
-    click.echo(csv_text([*(column.name for column in columns), *origin], texts), nl=False)
+    click.echo(rows_as_csv(columns, rows, found), nl=False)
 
 
 def _write_table(found: PartsShortlist) -> None:

@@ -16,7 +16,9 @@ from capmuster.rank.quantity import format_quantity
 if TYPE_CHECKING:
     import pandas as pd
 
+    from capmuster.rank.discrete.design import Filling
     from capmuster.rank.discrete.finalists import Finalist, PartsShortlist
+    from capmuster.rank.parts_request import PartsRequest
     from capmuster.rank.quantity import Unit
 
 Row: TypeAlias = tuple[str | int | float | bool | None, ...]
@@ -57,7 +59,7 @@ COLUMNS = (
     Column("highest_stress", "highest stress", "1", "highest voltage over derated rating"),
     Column("least", "least", "", "what is made least: loss [W], footprint [mm2] or price [EUR]"),
     Column("bound", "bound", "", "no choice of parts has less, by the integer solver; same unit"),
-    Column("gap", "gap", "1", "relative distance of the bound"),
+    Column("gap", "gap", "", "relative distance of the bound"),
     Column("proven", "proven", "", "whether the parts are proven best"),
     Column("continuous_bound", "continuous bound", "", "no choice has less, by relaxation; same unit"),
     Column("rank_place", "place by area", "", "place in continuous sizing"),
@@ -72,13 +74,14 @@ ELEMENT_COLUMNS = (
     Column("name", "element", "", "its name"),
     Column("node_1", "from", "", "node; of a switch the positive one while it blocks"),
     Column("node_2", "to", "", "node"),
-    Column("phase", "closed in", "", "phase in which a switch is closed"),
+    Column("phase", "closed in phase", "", "phase in which a switch is closed"),
     Column("part", "part", "", "name of the part"),
     Column("case", "case", "", "its size or package"),
     Column("parallel", "in parallel", "", "strings in parallel"),
     Column("series", "in series", "", "parts in a string"),
-    Column("value", "value", "F or ohm", "capacitance under bias, or on-resistance, of all its parts"),
-    Column("multiplier", "multiplier", "1", "a_c or a_r"),
+    Column("capacitance_F", "capacitance", "F", "of all its parts, under bias, where losses count"),
+    Column("on_resistance_ohm", "on-resistance", "ohm", "of all its parts, junctions warm"),
+    Column("multiplier", "multiplier", "", "a_c or a_r"),
     Column("voltage_V", "must stand", "V", "highest voltage"),
     Column("rating_V", "stands", "V", "derated rating"),
     Column("stress", "stress", "1", "voltage over derated rating"),
@@ -147,7 +150,7 @@ def _elements(found: PartsShortlist, place: int, finalist: Finalist) -> list[Row
             one.part.case,
             one.parallel,
             one.series,
-            one.value(found.request, volts),
+            *_values(one, found.request, volts),
             float(one.slot.multiplier),
             one.slot.voltage,
             one.rating,
@@ -157,6 +160,12 @@ def _elements(found: PartsShortlist, place: int, finalist: Finalist) -> list[Row
         )
         for one in finalist.fillings
     ]
+
+
+def _values(filling: Filling, request: PartsRequest, volts: float) -> tuple[float | None, float | None]:
+    """Capacitance and on-resistance, one of them None."""
+    value = filling.value(request, volts)
+    return (value, None) if isinstance(filling.part, CapacitorPart) else (None, value)
 
 
 def bill(found: PartsShortlist, finalist: Finalist) -> list[list[str]]:
