@@ -170,6 +170,8 @@ class ToleranceTable(Section):
     """``[tolerance]``: see `capmuster.rank.conditions.Tolerance`."""
 
     resistance: Spread = 0.0
+    density: Spread = 0.0
+    charge: Spread = 0.0
     capacitance: Spread = 0.0
     mismatch: Spread = 0.0
     load: Spread = 0.0

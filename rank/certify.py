@@ -8,9 +8,9 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from capmuster.rank.evaluation import evaluation_of
-from capmuster.rank.exactchoice import ExactChoice, exact_choice
+from capmuster.rank.exactchoice import ExactChoice, exact_choice, out_of_reach
 from capmuster.rank.pool import Pool, reordered
-from capmuster.rank.screening import can_be_exact
+from capmuster.rank.screening import can_be_exact, droop_within_reach
 from capmuster.rank.structs import placed
 
 if TYPE_CHECKING:
@@ -110,7 +110,8 @@ def certify(pool: Pool, brief: Brief, top: int) -> Certified:
         if least[place] < limit * (1 - _MARGIN):
             look(place, limit)
     limit = float(np.sort(merit)[places - 1])
-    better, unsized = _could_be_better(pool, merit, least, found, limit)
+    better = _could_be_better(pool, merit, least, found, limit)
+    unsized = _unsized_within_reach(pool, brief, limit)
     order = reordered(pool, merit)
     replaced = _with_exact(pool, found)
     certificate = Certificate(
@@ -130,14 +131,27 @@ def _could_be_better(
     least: NDArray[np.float64],
     found: dict[int, ExactChoice],
     limit: float,
-) -> tuple[int, int]:
-    """Count the topologies behind the last place that no bound keeps behind it: with sizes, and without."""
+) -> int:
+    """Count the sized topologies behind the last place that no bound keeps behind it."""
     behind = merit > limit * (1 + _MARGIN)
     settled = np.array([k in found and found[k].proven for k in range(len(pool))], dtype=bool)
     open_ = behind & ~settled & (least < limit * (1 - _MARGIN))
-    # Topologies without sizes for their usual classes may have some for others.
-    unsized = pool.unsized_bounds < limit * (1 - _MARGIN)
-    return int(np.count_nonzero(open_)), int(np.count_nonzero(unsized))
+    return int(np.count_nonzero(open_))
+
+
+def _unsized_within_reach(pool: Pool, brief: Brief, limit: float) -> int:
+    """Count the topologies without sizes for their usual classes that might have better ones for others."""
+    count = 0
+    for table, bounds in zip(pool.unsized, pool.unsized_bounds, strict=True):
+        for row in np.flatnonzero(bounds < limit * (1 - _MARGIN)).tolist():
+            converter = table.converter(row)
+            if droop_within_reach(converter, brief):
+                one = exact_choice(converter, brief, limit)
+                if one is None:
+                    count += not out_of_reach(converter, brief)
+                else:
+                    count += one.least < limit * (1 - _MARGIN)
+    return count
 
 
 def _with_exact(pool: Pool, found: dict[int, ExactChoice]) -> Pool:

@@ -111,14 +111,44 @@ _PROFILE_COLUMNS = (
 )
 
 
+_SPREAD_COLUMNS = (
+    Column(
+        "efficiency_5pct", "efficiency, 5 % worst", "1", "worst input; 95 % of the random trials reach it"
+    ),
+    Column("droop_5pct_V", "droop, 5 % worst", "V", "lowest input; 95 % of the random trials keep within it"),
+    Column("efficiency_corner", "efficiency, worst corner", "1", "worst input, worst of all corners"),
+    Column("droop_corner_V", "droop, worst corner", "V", "lowest input, worst of all corners"),
+    Column("output_holds", "output holds", "1", "share of the trials that give the required output"),
+    Column("comes_first", "comes first", "1", "share of the trials in which it is the most efficient listed"),
+)
+_OUTPUT_CAPACITOR = Column(
+    "output_capacitor_F",
+    "output capacitor",
+    "F",
+    "least one that keeps the output ripple, full load, any input",
+)
+_INPUT_CAPACITOR = Column(
+    "input_capacitor_F", "input capacitor", "F", "least one that keeps the input ripple, full load, any input"
+)
+
+
 def columns_of(brief: Brief) -> tuple[Column, ...]:
     """Columns of the shortlist of a brief, in their order."""
-    if not brief.counts_losses:
-        return COLUMNS
-    changed = {**_WITH_LOSSES, "place": _PLACES[brief.objective]}
+    common = list(COLUMNS)
+    more: list[Column] = []
+    if brief.counts_losses:
+        changed = {**_WITH_LOSSES, "place": _PLACES[brief.objective]}
+        if brief.profile:
+            changed["place"] = "place by mean loss over the load profile, 1 is least"
+        common = [replace(one, meaning=changed.get(one.name, one.meaning)) for one in COLUMNS]
+        more += LOSS_COLUMNS
     if brief.profile:
-        changed["place"] = "place by mean loss over the load profile, 1 is least"
-    common = [replace(one, meaning=changed.get(one.name, one.meaning)) for one in COLUMNS]
-    more = (*LOSS_COLUMNS, *(_PROFILE_COLUMNS if brief.profile else ()))
+        more += _PROFILE_COLUMNS
+    if brief.tolerance is not None:
+        more += _SPREAD_COLUMNS
+    if brief.output_ripple is not None:
+        more.append(_OUTPUT_CAPACITOR)
+    if brief.input_ripple is not None:
+        more.append(_INPUT_CAPACITOR)
     wiring = common.pop()
     return (*common, *more, wiring)

@@ -84,10 +84,14 @@ class Tolerance:
     ----------
     resistance
         On-resistance of all switches together [1].
+    density
+        Capacitance per area of all capacitors together, their plates included [1].
+    charge
+        Gate and output charge of all switches together [1].
     capacitance
-        Capacitance of all capacitors together [1].
+        Capacitance of each capacitor for itself [1].
     mismatch
-        Capacitance and on-resistance of each element for itself [1].
+        On-resistance of each switch for itself [1].
     load
         Load current [1].
     temperature_low, temperature_high
@@ -108,6 +112,8 @@ class Tolerance:
     """
 
     resistance: float = 0.0
+    density: float = 0.0
+    charge: float = 0.0
     capacitance: float = 0.0
     mismatch: float = 0.0
     load: float = 0.0
@@ -126,10 +132,15 @@ class Tolerance:
         for one in fields(self):
             if not math.isfinite(getattr(self, one.name)):
                 yield Fault(("tolerance", one.name), "is not finite", "a number")
-        for name in ("resistance", "capacitance", "mismatch", "load"):
+        for name in ("resistance", "density", "charge", "capacitance", "mismatch", "load"):
             value = getattr(self, name)
             if not 0 <= value < 1:
                 yield Fault(("tolerance", name), f"value {value:g} is not allowed", "0 to below 100 %")
+        for first, second in (("resistance", "mismatch"), ("density", "capacitance")):
+            if getattr(self, first) + getattr(self, second) >= 1:
+                yield Fault(
+                    ("tolerance", second), f"leaves nothing beside {first}", "both together below 100 %"
+                )
         for name, least in (("trials", 20), ("seed", 0)):
             if getattr(self, name) < least:
                 yield Fault(

@@ -10,6 +10,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass, replace
 from fractions import Fraction
+from itertools import islice, product
 from typing import TYPE_CHECKING, Any, TypeAlias
 
 import numpy as np
@@ -75,7 +76,7 @@ class ExactChoice:
 
 
 def exact_choice(converter: Converter, brief: Brief, enough: float = np.inf) -> ExactChoice | None:
-    """Find the best classes, trees and sizes of a converter, or None where its usual classes have no sizes.
+    """Find the best classes, trees and sizes of a converter, or None where no sizes were found to start from.
 
     Parameters
     ----------
@@ -88,10 +89,17 @@ def exact_choice(converter: Converter, brief: Brief, enough: float = np.inf) -> 
     """
     network, start = start_of(converter, brief)
     candidate, sized = choose_and_size(start)
-    if not np.isfinite(sized.merit[0]):
-        return None
     options = option_set(start, network, loss_points(brief, sized))
-    probe, probed = sized, _chains(candidate, options)
+    choice = _chains(candidate, options)
+    if not np.isfinite(sized.merit[0]):
+        firsts = _least_impedances(options)
+        tried = build(start, network, options, firsts)
+        found = size_candidates(tried)
+        if not np.isfinite(found.merit).any():
+            return None
+        rows = np.array([int(np.nanargmin(found.merit))])
+        candidate, sized, choice = part_of(tried, rows), rows_of(found, rows), firsts[int(rows[0])]
+    probe, probed = sized, choice
     seen, least = {probed}, -np.inf
     for _ in range(_ROUNDS):
         # Any sized choice gives prices, and any prices a bound on all choices.
@@ -183,6 +191,33 @@ def _chains(candidate: Candidates, options: OptionSet) -> Choice:
         edges = int(np.isfinite(vertex.charges[vertex.chain]).sum())
         vertices.append((vertex.chain, tuple(next(classes) for _ in range(edges))))
     return Choice(tuple(candidate.elements.capacitor_choice.index[0].tolist()), tuple(vertices))
+
+
+def out_of_reach(converter: Converter, brief: Brief) -> bool:
+    """Whether no choice at all meets the droop within the area budgets; "least-loss" only.
+
+    The trees and classes of the switches that give the least fast limit are tried with all classes of the
+    capacitors; False where these are too many.
+    """
+    if brief.objective != "least-loss" or len(brief.technology.capacitors) ** converter.n > _MOST_CHOICES:
+        return False
+    network, start = start_of(converter, brief)
+    options = option_set(start, network, loss_points(brief, size_candidates(start)))
+    found = size_candidates(build(start, network, options, _least_impedances(options)))
+    return not np.isfinite(found.merit).any()
+
+
+def _least_impedances(options: OptionSet) -> list[Choice]:
+    """Choose the switches of least fast limit on a given area, with all classes of the capacitors."""
+    vertices = []
+    for vertex, fast in zip(options.vertices, options.fast, strict=True):
+        costs = np.sqrt(fast)
+        total = np.nan_to_num(vertex.charges) @ np.nan_to_num(costs.min(axis=1), posinf=1e30)
+        tree = int(np.argmin(total))
+        vertices.append((tree, tuple(int(np.argmin(costs[p])) for p in _edges(vertex, tree))))
+    count, classes = options.slow.shape
+    every = islice(product(range(classes), repeat=count), _MOST_CHOICES)
+    return [Choice(one, tuple(vertices)) for one in every]
 
 
 def _cost(options: OptionSet, costs: OptionCosts, choice: Choice) -> Floats:

@@ -1,4 +1,4 @@
-"""The figures behind the columns of a shortlist that counts losses."""
+"""The figures behind the columns of a shortlist: losses, spreads, the capacitors around a converter."""
 
 from __future__ import annotations
 
@@ -7,11 +7,19 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from capmuster.rank.losses import TERM_FIELDS, TERMS
+from capmuster.rank.ripple import capacitor_for, excursion, phase_shares
 
 if TYPE_CHECKING:
+    from collections.abc import Sequence
+
     from numpy.typing import NDArray
 
+    from capmuster.rank.brief import Brief
     from capmuster.rank.objectives import Sized
+    from capmuster.rank.pool import Pool
+    from capmuster.rank.tolerance import Spread
+
+_I, _O = 1, 2
 
 
 def loss_values(
@@ -52,4 +60,49 @@ def loss_values(
     }
     for term, name in zip(TERMS, TERM_FIELDS, strict=True):
         values[term.name] = getattr(at.losses, name)
+    return values
+
+
+def spread_values(spreads: Sequence[Spread]) -> dict[str, NDArray[np.float64]]:
+    """Work out the columns of tolerances, by name; none without spreads."""
+    if not spreads:
+        return {}
+    names = {
+        "efficiency_5pct": "efficiency",
+        "droop_5pct_V": "droop",
+        "efficiency_corner": "corner_efficiency",
+        "droop_corner_V": "corner_droop",
+        "output_holds": "holds",
+        "comes_first": "first",
+    }
+    return {column: np.array([getattr(one, name) for one in spreads]) for column, name in names.items()}
+
+
+def capacitor_values(brief: Brief, pool: Pool, rows: int) -> dict[str, NDArray[np.float64]]:
+    """Work out the capacitors around the first candidates, by column; none without a ripple in the brief.
+
+    The lowest frequency of the input range counts. The input draws |M| times the load current.
+    """
+    figures = pool.evaluation
+    ratio = np.abs(figures.ratio[:rows])
+    if figures.sized is None:
+        frequency, duty = np.full(rows, brief.frequency), np.full(rows, 0.5)
+        current = np.full(rows, brief.current)
+    else:
+        sized = figures.sized
+        ends = [at.frequency[:rows] for at in (sized.minimum, sized.nominal, sized.maximum)]
+        frequency, duty = np.fmin.reduce(ends), sized.design.duty[:rows]
+        current = sized.design.current[:rows]
+    values = {}
+    for column, port, ripple, mean in (
+        ("output_capacitor_F", _O, brief.output_ripple, current),
+        ("input_capacitor_F", _I, brief.input_ripple, current * ratio),
+    ):
+        if ripple is not None:
+            shares = [
+                phase_shares(pool.tables[group].take(slice(row, row + 1)), port)[0]
+                for group, row in zip(pool.group[:rows].tolist(), pool.row[:rows].tolist(), strict=True)
+            ]
+            movement = excursion(np.reshape(shares, (rows, 2)), duty, brief.copies)
+            values[column] = capacitor_for(movement, mean, frequency, ripple)
     return values

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections import Counter
 from dataclasses import dataclass, replace
 from fractions import Fraction
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, TypeAlias
 
 import numpy as np
 
@@ -63,9 +63,9 @@ class Pool:
         Number of converters of the right sign that hold the output.
     left_out
         How many of these were left out, by reason.
-    unsized_bounds
-        Bounds on the merits of the topologies that were left out because their classes have no sizes that
-        meet the brief; see `Evaluation.bound`.
+    unsized, unsized_bounds
+        Topologies that were left out because their classes have no sizes that meet the brief, in tables, and
+        the bounds on their merits; see `Evaluation.bound`.
     refused
         Reason for each included converter that is no candidate, by its id.
     """
@@ -80,7 +80,8 @@ class Pool:
     complete_up_to: int
     considered: int
     left_out: dict[str, int]
-    unsized_bounds: NDArray[np.float64]
+    unsized: tuple[ConverterTable, ...]
+    unsized_bounds: tuple[NDArray[np.float64], ...]
     refused: dict[str, str]
 
     def __len__(self) -> int:
@@ -134,24 +135,31 @@ def gather(brief: Brief, include: Sequence[Converter] = ()) -> Pool:
     refused: dict[str, str] = {}
     considered = 0
     fits: list[tuple[ConverterTable, Evaluation]] = []
-    unsized: list[NDArray[np.float64]] = [np.zeros(0)]
+    unsized: list[tuple[ConverterTable, NDArray[np.float64]]] = []
     for table, chosen in _sources(brief, reach, include):
         holds = _where(table, brief.holds)
         considered += int(np.count_nonzero(holds))
-        kept, figures, reasons, bounds = _judged(table.take(holds), brief, forgive_unclean=chosen)
-        unsized.append(bounds)
+        kept, figures, reasons, without = _judged(table.take(holds), brief, forgive_unclean=chosen)
+        unsized.append(without)
         left_out.update(reasons)
         if len(kept):
             fits.append((kept, figures))
         elif chosen:
             refused[table.ids()[0]] = next(iter(reasons), _NOT_HELD)
     pool = _ordered(brief, fits, reach=reach, considered=considered, left_out=left_out, refused=refused)
-    return replace(pool, unsized_bounds=np.concatenate(unsized))
+    return replace(
+        pool,
+        unsized=tuple(one for one, _ in unsized),
+        unsized_bounds=tuple(bounds for _, bounds in unsized),
+    )
+
+
+_Unsized: TypeAlias = "tuple[ConverterTable, NDArray[np.float64]]"
 
 
 def _judged(
     table: ConverterTable, brief: Brief, *, forgive_unclean: bool
-) -> tuple[ConverterTable, Evaluation, Counter[str], NDArray[np.float64]]:
+) -> tuple[ConverterTable, Evaluation, Counter[str], _Unsized]:
     """Size converters that hold the output.
 
     Returns those that meet the brief, why the others do not, and bounds on what those without sizes could
@@ -171,7 +179,9 @@ def _judged(
     most_switches, most_area = brief.most_switches or np.inf, brief.area or np.inf
     table = table.take(keep(np.asarray(scores.switches <= most_switches), _TOO_MANY_SWITCHES))
     figures = evaluate(table, brief)
-    bounds = np.zeros(0) if figures.bound is None else figures.bound[~np.isfinite(figures.merit)]
+    sizeless = ~np.isfinite(figures.merit)
+    bounds = np.zeros(len(table)) if figures.bound is None else figures.bound
+    without = (table.take(sizeless), bounds[sizeless])
     checks: tuple[tuple[str, Callable[[Evaluation], NDArray[np.bool_]]], ...] = (
         (_NO_SIZES if brief.counts_losses else _NO_AREA, lambda f: np.isfinite(f.merit)),
         (_TOO_LARGE, lambda f: np.asarray(f.area <= most_area * (1 + _ROUNDING))),
@@ -183,7 +193,7 @@ def _judged(
         if not good.all():
             reasons[reason] += int(np.count_nonzero(~good))
         table, figures = table.take(good), rows_of(figures, good)
-    return table, figures, reasons, bounds
+    return table, figures, reasons, without
 
 
 def _both(table: ConverterTable, scores: Scores, rows: NDArray[np.bool_]) -> tuple[ConverterTable, Scores]:
@@ -266,7 +276,8 @@ def _ordered(
         complete_up_to=reach,
         considered=considered,
         left_out=dict(left_out),
-        unsized_bounds=np.zeros(0),
+        unsized=(),
+        unsized_bounds=(),
         refused=refused,
     )
 

@@ -24,12 +24,15 @@ from capmuster.rank.losses import (
 from capmuster.rank.objectives import part_of, relaxed_bound
 from capmuster.rank.profile import loss_points
 from capmuster.rank.structs import rows_of
+from capmuster.rank.switching import switch_network
+from capmuster.rank.trees import trees_of
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
 
     from numpy.typing import NDArray
 
+    from capmuster.enumerate.wiring import Converter
     from capmuster.rank.brief import Brief
     from capmuster.rank.objectives import Sized
     from capmuster.rank.operation import Candidates
@@ -41,6 +44,8 @@ if TYPE_CHECKING:
 
 _O = 2
 _STEP = 0.05  # of log f
+_ROUNDING = 1e-9
+_ANGLES = 181
 
 
 def can_be_exact(brief: Brief) -> bool:
@@ -72,6 +77,39 @@ def merit_bound(candidates: Candidates, sized: Sized) -> Floats:
     if len(rest):
         bound[rest] = relaxed_bound(replace(part_of(candidates, rest), relaxed=True))
     return np.asarray(np.fmin(bound, np.where(np.isfinite(sized.merit), sized.merit, np.inf)))
+
+
+def droop_within_reach(converter: Converter, brief: Brief) -> bool:
+    """Whether any classes and switch trees of a converter could meet the droop within the area budgets.
+
+    For every angle ``R_out >= cos x + sin y``, and each of the two is least where areas are shared by the
+    Cauchy-Schwarz inequality (see `capmuster.rank.areas`), at the highest frequency. In regulated use
+    voltages are ideal here, which is below any that elements must be rated for.
+    """
+    if brief.area is None and brief.silicon_area is None:
+        return True
+    technology, network, balance = brief.technology, switch_network(converter), converter.balance
+    classes, volts = technology.capacitor_columns(), brief.input_maximum
+    held = np.array([float(abs(v)) for v in balance.voltages]) * volts
+    charge = np.array([abs(q) / abs(balance.port_charges[_O]) for q in balance.charges])
+    stack = (charge[:, None] * series_counts(held, classes.limit)) ** 2
+    angle = np.linspace(0.0, np.pi / 2, _ANGLES)[:, None, None]
+    duty = 0.5 if brief.duty is None else brief.duty  # a free duty has no lower factor than 50 % gives
+    slow = stack / classes.density / brief.frequency
+    series = stack * classes.series_resistance / (duty * (1 - duty))
+    capacitors = np.sqrt(np.cos(angle) * slow + np.sin(angle) * series).min(axis=-1).sum(axis=-1)
+    switches = 0.0
+    for vertex in trees_of(network):
+        share = 1.0 if brief.duty is None else (duty if vertex.phase == 1 else 1 - duty)
+        cost = np.sqrt(technology.switch_choice(vertex.blocking * volts).cost / share)
+        switches += float((np.nan_to_num(vertex.charges) @ cost).min())
+    on = np.sqrt(np.sin(angle[:, 0, 0])) * switches
+    if brief.area is not None:
+        reached = (capacitors + on) ** 2 / brief.area
+    else:
+        reached = capacitors**2 / (brief.capacitor_area or np.inf) + on**2 / (brief.silicon_area or np.inf)
+    limit = float(brief.r_max(float(converter.ratio))) - technology.wiring_resistance
+    return bool(reached.max() < limit * (1 + _ROUNDING))
 
 
 @dataclass(frozen=True, slots=True)

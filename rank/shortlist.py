@@ -14,14 +14,17 @@ from capmuster.rank._version import __version__
 from capmuster.rank.cautions import cautions
 from capmuster.rank.certify import certify
 from capmuster.rank.columns import COLUMNS, Column, columns_of
+from capmuster.rank.devicechoice import choose_and_size
 from capmuster.rank.elements import Element, elements_of
 from capmuster.rank.evaluation import ceiling, efficiency
+from capmuster.rank.exactchoice import start_of
 from capmuster.rank.finalist import finalists
 from capmuster.rank.finaltable import EXACT_COLUMNS, finalist_frame
-from capmuster.rank.lossvalues import loss_values
+from capmuster.rank.lossvalues import capacitor_values, loss_values, spread_values
 from capmuster.rank.pool import Pool, gather
 from capmuster.rank.structs import rows_of
 from capmuster.rank.switching import switch_network
+from capmuster.rank.tolerance import spreads
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
@@ -33,7 +36,10 @@ if TYPE_CHECKING:
     from capmuster.rank.certify import Certificate
     from capmuster.rank.exactchoice import ExactChoice
     from capmuster.rank.finalist import Finalist
+    from capmuster.rank.objectives import Sized
+    from capmuster.rank.operation import Candidates
     from capmuster.rank.switching import SwitchNetwork
+    from capmuster.rank.tolerance import Spread
 
 __all__ = ["COLUMNS", "Column", "Included", "Shortlist", "shortlist"]
 
@@ -176,12 +182,29 @@ class Shortlist:
         if e.sized is not None:
             ideal = np.abs(ratio) * self.brief.input_nominal
             values.update(loss_values(rows_of(e.sized, places), area, ideal))
+        values.update(spread_values(self.spreads))
+        values.update(capacitor_values(self.brief, self.pool, len(self)))
         exact = finalist_frame(self.exact)
         values.update({column.name: exact[column.name] for column in EXACT_COLUMNS})
         frame = pd.DataFrame({column.name: values[column.name] for column in self.columns})
         frame.attrs["units"] = {column.name: column.unit for column in self.columns}
         frame.attrs.update(self.provenance)
         return frame
+
+    @cached_property
+    def spreads(self) -> tuple[Spread, ...]:
+        """What the brief's tolerances do to the rows of the table; empty without any."""
+        tolerance = self.brief.tolerance
+        if tolerance is None:
+            return ()
+        rows = [(str(self.pool.ids[k]), *self._sized_candidate(k)) for k in range(len(self))]
+        return spreads(rows, tolerance)
+
+    def _sized_candidate(self, row: int) -> tuple[Candidates, Sized]:
+        exact = self._exact(row)
+        if exact is not None:
+            return exact.candidate, exact.sized
+        return choose_and_size(start_of(self.pool.converter(row), self.brief)[1])
 
     def families(self, row: int) -> tuple[str, ...]:
         """Families of the candidate in a row, counted from 0."""

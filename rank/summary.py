@@ -63,7 +63,36 @@ def assumptions(brief: Brief) -> list[tuple[str, str]]:
             "gate drive",
             "all switches from the rails" if brief.drive == "rails" else "floating supplies allowed, counted",
         ),
+        *_around(brief),
     ]
+
+
+def _around(brief: Brief) -> list[tuple[str, str]]:
+    """Tolerances, ripple and copies, as far as the brief has any."""
+    found = []
+    spread = brief.tolerance
+    if spread is not None:
+        parts = [
+            f"{name} {format_quantity(value, '1')}"
+            for name, value in (
+                ("on-resistance", spread.resistance),
+                ("capacitance density", spread.density),
+                ("gate and output charge", spread.charge),
+                ("each capacitor", spread.capacitance),
+                ("each switch", spread.mismatch),
+                ("load", spread.load),
+            )
+            if value
+        ]
+        degrees = f"{spread.temperature_low:g} to {spread.temperature_high:g} °C"
+        found.append(("tolerance", f"±: {', '.join(parts) or 'none'}; {degrees}; {spread.trials} trials"))
+    for name, ripple in (("output", brief.output_ripple), ("input", brief.input_ripple)):
+        if ripple is not None:
+            text = f"{format_quantity(ripple, 'V')} peak to peak at most"
+            found.append((f"{name} ripple", text))
+    if brief.copies > 1:
+        found.append(("copies", f"{brief.copies} interleaved, in all as large as one"))
+    return found
 
 
 def _how_counted(brief: Brief) -> list[tuple[str, str]]:
@@ -174,7 +203,7 @@ def _certificate(shortlist: Shortlist) -> list[str]:
     if sized is None or not len(pool):
         return []
     lines = [
-        f"Sizes: {int(sized.proven.sum())} of {len(pool)} optima proven to a relative 1e-9, for their classes."
+        f"Sizes: {int(sized.proven.sum())} of {len(pool)} optima proven to 1e-9 relative, for their classes."
     ]
     proof = shortlist.certificate
     if proof is None:

@@ -27,6 +27,7 @@ def test_every_shipped_file_loads():
         "greenhouse-node-losses",
         "greenhouse-node-regulated",
         "pump-shelf",
+        "pump-shelf-losses",
     )
     for name in catalogs.names("technologies"):
         technology = load_technology(name)
