@@ -12,8 +12,10 @@ import numpy as np
 from capmuster.enumerate.census import CENSUS_REACH
 from capmuster.enumerate.converters import ConverterTable, converters, table_of
 from capmuster.enumerate.families import members
+from capmuster.rank.candidates import census_ratios
 from capmuster.rank.evaluation import Evaluation, evaluate, worst_efficiency
 from capmuster.rank.frontier import frontier
+from capmuster.rank.screened import Source, screened
 from capmuster.rank.structs import joined, rows_of
 from capmuster.rank.switchtable import score
 
@@ -136,9 +138,11 @@ def gather(brief: Brief, include: Sequence[Converter] = ()) -> Pool:
     considered = 0
     fits: list[tuple[ConverterTable, Evaluation]] = []
     unsized: list[tuple[ConverterTable, NDArray[np.float64]]] = []
-    for table, chosen in _sources(brief, reach, include):
+    for source in _sources(brief, reach, include):
+        table, chosen = source.table, source.chosen
         holds = _where(table, brief.holds)
-        considered += int(np.count_nonzero(holds))
+        considered += int(np.count_nonzero(holds)) + source.left_out.total()
+        left_out.update(source.left_out)
         kept, figures, reasons, without = _judged(table.take(holds), brief, forgive_unclean=chosen)
         unsized.append(without)
         left_out.update(reasons)
@@ -207,16 +211,18 @@ def _floor(brief: Brief) -> float:
     return brief.efficiency_floor * (1 - _ROUNDING)
 
 
-def _sources(brief: Brief, reach: int, include: Sequence[Converter]) -> Iterator[tuple[ConverterTable, bool]]:
-    """Yield tables of distinct converters, and whether the user chose them."""
+def _sources(brief: Brief, reach: int, include: Sequence[Converter]) -> Iterator[Source]:
+    """Yield tables of distinct converters."""
     chosen = list(dict.fromkeys(include))
     ids = {converter.id for converter in chosen}
     for n in range(1, reach + 1):
-        for ratio in brief.ratios or (None,):
-            table = converters(n, ratio)
-            if any(converter.n == n for converter in chosen):
-                table = table.take(np.array([one not in ids for one in table.ids()], dtype=bool))
-            yield table, False
+        for ratio in brief.ratios or census_ratios(n):
+            if any((converter.n, converter.ratio) == (n, ratio) for converter in chosen):
+                table = converters(n, ratio)
+                others = np.array([one not in ids for one in table.ids()], dtype=bool)
+                yield Source(table.take(others), chosen=False, left_out=Counter())
+            elif brief.holds(ratio):
+                yield _screened(brief, n, ratio)
     beyond = {
         member.converter.id: member.converter
         for member in members(brief.most_capacitors)
@@ -225,9 +231,23 @@ def _sources(brief: Brief, reach: int, include: Sequence[Converter]) -> Iterator
     for n in range(reach + 1, brief.most_capacitors + 1):
         same_size = [one for one in beyond.values() if one.n == n and one.id not in ids]
         if same_size:
-            yield table_of(same_size), False
+            yield Source(table_of(same_size), chosen=False, left_out=Counter())
     for converter in chosen:
-        yield table_of([converter]), True
+        yield Source(table_of([converter]), chosen=True, left_out=Counter())
+
+
+def _screened(brief: Brief, n: int, ratio: Fraction) -> Source:
+    """Leave out what fails without its sizes, in the order in which `_judged` asks."""
+    most_switches = brief.most_switches or np.inf
+    return screened(
+        n,
+        ratio,
+        [(_NOT_BORNE, brief.bears(ratio)), (_INEFFICIENT, _efficient(brief, ratio))],
+        [
+            (_UNCLEAN, lambda measures: measures.clean),
+            (_TOO_MANY_SWITCHES, lambda measures: np.asarray(measures.switches <= most_switches)),
+        ],
+    )
 
 
 def _where(table: ConverterTable, condition: Callable[[Fraction], bool]) -> NDArray[np.bool_]:
