@@ -26,6 +26,7 @@ if TYPE_CHECKING:
     from capmuster.enumerate.tally import Triple
 
 _I, _O = 1, 2
+_MOST_REMEMBERED = 4  # five capacitors can take a hundred megabytes for a single ratio
 ROLES = EXCHANGES
 """The names that ports A, B, C take: 0 = G, 1 = I, 2 = O; row k is role k of `capmuster.enumerate.wiring`."""
 _ORDER = np.array([9, 3, 1])
@@ -133,7 +134,6 @@ def _plate_potentials(
     return np.take_along_axis(potentials[:, phase], vertices, axis=1).reshape(rows, n, 2)
 
 
-@lru_cache(maxsize=64)
 def converters(n: int, ratio: Fraction | None = None) -> ConverterTable:
     """Return the census converters of exactly ``n`` capacitors, of one ratio or of all.
 
@@ -146,8 +146,15 @@ def converters(n: int, ratio: Fraction | None = None) -> ConverterTable:
         When ``n`` is beyond the census.
     """
     check_reach(n)
+    return _remembered(n, ratio) if n <= _MOST_REMEMBERED else _listed(n, ratio)
+
+
+def _listed(n: int, ratio: Fraction | None) -> ConverterTable:
     cells = census(n) if ratio is None else cells_at(addresses(n, triple_of_ratio(ratio)))
     return converters_of(cells, ratio)
+
+
+_remembered = lru_cache(maxsize=64)(_listed)
 
 
 def triple_of_ratio(ratio: Fraction) -> Triple:

@@ -106,7 +106,7 @@ def survey(
     jobs: int | None = None,
     say: Callable[[Note], None] = silent,
 ) -> Survey:
-    """Pass over every cell of exactly ``n`` flying capacitors.
+    """Go through every cell of exactly ``n`` flying capacitors.
 
     Work is split over ``jobs`` processes of the active joblib backend (``joblib.parallel_config``). Finished
     shards are kept in the cache folder until the survey is complete, and the survey after that.

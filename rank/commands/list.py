@@ -90,6 +90,9 @@ def command(
     Best is the greatest product of capacitor and switch utilisation; then come fewer capacitors, fewer
     switches, higher capacitor utilisation and the id. The list is complete up to the census; with more
     capacitors it goes on with the members of the known families.
+
+    The census of five capacitors is built once and kept in the user's cache folder; the environment variable
+    CAPMUSTER_CACHE names another one.
     """
     from capmuster.rank.filters import Filters  # noqa: PLC0415 -- nothing heavy before it is needed
     from capmuster.rank.listing import find_converters  # noqa: PLC0415
@@ -251,10 +254,13 @@ def _out_of_reach(listing: Listing) -> str:
     nearest = " and ".join(str(ratio) for ratio in listing.nearest)
     known = "" if listing.capacitors_needed <= ENUMERATED else "at most "
     needed = _counted(listing.capacitors_needed, "flying capacitor")
-    return (
+    said = (
         f"0 converters: ratio {listing.ratio} takes {known}{needed}; "
         f"nearest with at most {listing.complete_up_to}: {nearest}."
     )
+    if listing.complete_up_to < listing.capacitors_needed <= ENUMERATED:
+        said += f" To go through them: capmuster survey {ENUMERATED} --ratio {listing.ratio}"
+    return said
 
 
 def _counted(number: int, thing: str) -> str:

@@ -58,7 +58,7 @@ def command(
     scheduler: str | None,
     form: str,
 ) -> None:
-    """Pass over every cell of exactly N flying capacitors (up to 6) and keep the best of each ratio.
+    """Go through every cell of exactly N flying capacitors (up to 6) and keep the best of each ratio.
 
     Six capacitors have some four hundred million cells: none is stored, an interrupted survey goes on where
     it stopped, and a finished one is kept and answers at once. The counts are certified as by count.
