@@ -9,7 +9,6 @@ import numpy as np
 import pandas as pd
 import pytest
 
-from capmuster.enumerate.converters import converters
 from capmuster.enumerate.errors import CapmusterError
 from capmuster.enumerate.families import family_names, series_parallel
 from capmuster.enumerate.wiring import Cell, Converter
@@ -29,9 +28,10 @@ def found(request):
 def test_columns_are_documented_with_units(found):
     frame = found.frame
     assert isinstance(frame, pd.DataFrame)
-    assert list(frame.columns) == [column.name for column in COLUMNS]
-    assert frame.attrs["units"] == {column.name: column.unit for column in COLUMNS}
-    for column in COLUMNS:
+    assert list(frame.columns) == [column.name for column in found.columns]
+    assert frame.attrs["units"] == {column.name: column.unit for column in found.columns}
+    assert {column.name for column in COLUMNS} <= set(frame.columns)
+    for column in found.columns:
         assert column.meaning
         assert column.heading
         # The unit is in the name of whatever has one.
@@ -115,10 +115,11 @@ def test_the_assumptions_name_the_job(found):
 
 
 def test_top_shows_no_more_than_there_are(found):
-    every = shortlist(found.brief, top=10**6)
-    assert len(every) == len(every.frame) == len(every.pool)
-    # fmt of the first rows does not depend on how many are shown
-    assert every.frame.head(len(found)).equals(found.frame)
+    every = shortlist(found.brief, top=15)
+    assert len(every) == len(every.frame) == min(15, len(every.pool))
+    assert len(shortlist(replace(found.brief, most_capacitors=1), top=10**6)) <= 1
+    columns = [column.name for column in COLUMNS]  # what is said of a row whatever stands beside it
+    assert every.frame[columns].head(len(found)).equals(found.frame[columns])
     one = shortlist(found.brief, top=1)
     assert one.frame["id"].tolist() == found.frame["id"].tolist()[:1]
 
@@ -145,14 +146,14 @@ def test_an_included_wiring_is_reported_once_with_its_place():
 
 
 def test_including_what_is_there_anyway_changes_nothing():
-    converter = converters(3, Fraction(1, 2)).converter(5)
-    plain = shortlist(FIXED, top=200)
-    own = next(k for k, one in enumerate(plain.frame["id"]) if plain.frame["flying_capacitors"][k] == 3)
-    converter = Converter.parse(plain.frame["wiring"][own])
-    found = shortlist(FIXED, top=200, include=[converter])
-    assert found.included[0].place == own + 1
-    assert found.frame["id"].tolist() == plain.frame["id"].tolist()
-    assert found.frame["area_mm2"].tolist() == pytest.approx(plain.frame["area_mm2"].tolist(), rel=1e-12)
+    brief = replace(FIXED, most_capacitors=3)
+    plain = shortlist(brief, top=3)
+    place = next(k for k, n in enumerate(plain.pool.capacitors.tolist()) if n == 3)
+    found = shortlist(brief, top=3, include=[plain.pool.converter(place)])
+    assert found.included[0].place == place + 1
+    assert found.pool.ids.tolist() == plain.pool.ids.tolist()
+    area = plain.pool.evaluation.area.tolist()
+    assert found.pool.evaluation.area.tolist() == pytest.approx(area, rel=1e-12)
 
 
 def test_provenance_follows_the_brief_and_the_technology():
