@@ -5,6 +5,7 @@ from __future__ import annotations
 import os
 import sys
 from importlib import import_module
+from io import TextIOWrapper
 from typing import TYPE_CHECKING
 
 import click
@@ -63,6 +64,9 @@ def group(context: click.Context) -> None:
 
 def main(arguments: Sequence[str] | None = None) -> None:
     """Run the command line; exit status 2 on bad input, 130 when interrupted, 1 when output fails."""
+    for stream in (sys.stdout, sys.stderr):
+        if isinstance(stream, TextIOWrapper):
+            stream.reconfigure(errors="replace")  # a terminal without Ω shows a question mark instead
     try:
         status = group.main(args=arguments, prog_name="capmuster", standalone_mode=False)
         sys.stdout.flush()

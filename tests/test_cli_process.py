@@ -103,6 +103,19 @@ def test_a_closed_pipe_is_quiet():
     assert running.returncode in (0, 1)
 
 
+def test_a_terminal_without_greek_letters_is_no_obstacle():
+    for encoding in ("ascii", "latin-1"):
+        ended = subprocess.run(
+            [*START, "rank", "pump-shelf", "--top", "1"],
+            env={**environment(), "PYTHONIOENCODING": encoding},
+            capture_output=True,
+            encoding=encoding,
+            check=False,
+        )
+        assert ended.returncode == 0
+        assert "\nplace  id" in ended.stdout
+
+
 @pytest.mark.skipif(not os.path.exists("/dev/full"), reason="needs the device that is always full")  # noqa: PTH110
 def test_a_full_disk_is_one_line():
     with open("/dev/full", "w", encoding="utf-8") as full:  # noqa: PTH123
