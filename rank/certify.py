@@ -9,11 +9,13 @@ import numpy as np
 
 from capmuster.rank.evaluation import evaluation_of
 from capmuster.rank.exactchoice import ExactChoice, exact_choice, out_of_reach
-from capmuster.rank.pool import Pool, reordered
+from capmuster.rank.pool import Pool, efficiency_floor, reordered
 from capmuster.rank.screening import can_be_exact, droop_within_reach
 from capmuster.rank.structs import placed
 
 if TYPE_CHECKING:
+    from collections.abc import Collection
+
     from numpy.typing import NDArray
 
     from capmuster.rank.brief import Brief
@@ -72,7 +74,9 @@ class Certified:
     certificate: Certificate | None
 
 
-def certify(pool: Pool, brief: Brief, top: int) -> Certified:
+def certify(
+    pool: Pool, brief: Brief, top: int, families: Collection[str] = (), chosen: Collection[str] = ()
+) -> Certified:
     """Find the exact choices of the first candidates and of all that could belong among them.
 
     Parameters
@@ -83,37 +87,31 @@ def certify(pool: Pool, brief: Brief, top: int) -> Certified:
         The job.
     top
         How many places are of interest.
+    families
+        Ids of family members, the best of which is found exactly too.
+    chosen
+        Ids of candidates that are found exactly wherever they stand.
     """
     places = min(top, len(pool))
     if not can_be_exact(brief) or not places:
         return Certified(pool, (None,) * places, None)
-    merit = pool.evaluation.merit.copy()
-    bound = pool.evaluation.bound if pool.evaluation.bound is not None else np.full(len(pool), -np.inf)
-    found: dict[int, ExactChoice] = {}
-    least = bound.copy()
-
-    def look(place: int, enough: float) -> None:
-        one = exact_choice(pool.converter(place), brief, enough)
-        if one is None:
-            return
-        least[place] = max(least[place], one.least)
-        if one.sized.merit[0] < enough and one.sized.merit[0] <= merit[place] * (1 + _MARGIN):
-            found[place] = one
-            merit[place] = float(one.sized.merit[0])
-
+    search = _Search.of(pool, brief)
     for place in range(places):
-        look(place, np.inf)
-    limit = float(np.sort(merit)[places - 1])
-    survivors = [k for k in np.argsort(bound, kind="stable").tolist() if k >= places and bound[k] < limit]
+        search.look(place, np.inf)
+    by_bound = np.argsort(search.bound, kind="stable").tolist()
+    survivors = [k for k in by_bound if k >= places and search.bound[k] < search.limit(places)]
     for place in survivors[:_MOST_SURVIVORS]:
-        limit = float(np.sort(merit)[places - 1])
-        if least[place] < limit * (1 - _MARGIN):
-            look(place, limit)
-    limit = float(np.sort(merit)[places - 1])
-    better = _could_be_better(pool, merit, least, found, limit)
+        search.look(place, search.limit(places))
+    ids = pool.ids.tolist()
+    for place in [k for k in by_bound if ids[k] in families]:
+        others = [search.merit[k] for k in search.found if ids[k] in families]
+        search.look(place, min(others, default=np.inf))
+    for place in [k for k in by_bound if ids[k] in chosen]:
+        search.look(place, np.inf)
+    limit, found = search.limit(places), search.found
+    better = _could_be_better(search, limit)
     unsized = _unsized_within_reach(pool, brief, limit)
-    order = reordered(pool, merit)
-    replaced = _with_exact(pool, found)
+    order = reordered(pool, search.merit)
     certificate = Certificate(
         places=places,
         exact=len(found),
@@ -122,20 +120,57 @@ def certify(pool: Pool, brief: Brief, top: int) -> Certified:
         open=better + unsized,
     )
     finalists = tuple(found.get(int(k)) for k in order[:places])
-    return Certified(replaced.in_order(order), finalists, certificate)
+    return Certified(_with_exact(pool, found).in_order(order), finalists, certificate)
 
 
-def _could_be_better(
-    pool: Pool,
-    merit: NDArray[np.float64],
-    least: NDArray[np.float64],
-    found: dict[int, ExactChoice],
-    limit: float,
-) -> int:
+@dataclass(frozen=True, slots=True)
+class _Search:
+    """What is known so far; `merit` and `least` (lower bounds) are improved in place."""
+
+    pool: Pool
+    brief: Brief
+    merit: NDArray[np.float64]
+    bound: NDArray[np.float64]
+    least: NDArray[np.float64]
+    found: dict[int, ExactChoice]
+
+    @classmethod
+    def of(cls, pool: Pool, brief: Brief) -> _Search:
+        figures = pool.evaluation
+        bound = figures.bound if figures.bound is not None else np.full(len(pool), -np.inf)
+        return cls(pool, brief, figures.merit.copy(), bound, bound.copy(), {})
+
+    def limit(self, places: int) -> float:
+        """Merit of the last of so many places."""
+        return float(np.sort(self.merit)[places - 1])
+
+    def look(self, place: int, enough: float) -> None:
+        """Find the exact choice of a candidate, if it can be better than a merit."""
+        # An idle switch costs what no element of the bound stands for.
+        if (
+            place in self.found
+            or self.least[place] >= enough * (1 - _MARGIN)
+            or not self.pool.evaluation.clean[place]
+        ):
+            return
+        one = exact_choice(self.pool.converter(place), self.brief, enough)
+        if one is None:
+            return
+        self.least[place] = max(self.least[place], one.least)
+        merit = float(one.sized.merit[0])
+        holds_floor = one.sized.worst_efficiency[0] >= efficiency_floor(self.brief)
+        if merit < enough and merit <= self.merit[place] * (1 + _MARGIN) and holds_floor:
+            self.found[place] = one
+            self.merit[place] = merit
+
+
+def _could_be_better(search: _Search, limit: float) -> int:
     """Count the sized topologies behind the last place that no bound keeps behind it."""
-    behind = merit > limit * (1 + _MARGIN)
-    settled = np.array([k in found and found[k].proven for k in range(len(pool))], dtype=bool)
-    open_ = behind & ~settled & (least < limit * (1 - _MARGIN))
+    behind = search.merit > limit * (1 + _MARGIN)
+    settled = ~search.pool.evaluation.clean
+    for place, one in search.found.items():
+        settled[place] |= one.proven
+    open_ = behind & ~settled & (search.least < limit * (1 - _MARGIN))
     return int(np.count_nonzero(open_))
 
 

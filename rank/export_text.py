@@ -48,11 +48,18 @@ def to_json(shortlist: Shortlist) -> bytes:
             "best_family_place": shortlist.best_family_place,
             "gain_over_family": gain,
             "included": [asdict(one) for one in shortlist.included],
+            "certificate": _certificate(shortlist),
         },
         "units": {column.name: column.unit for column in shortlist.columns},
         "candidates": rows,
     }
     return (json.dumps(content, ensure_ascii=False, indent=1) + "\n").encode()
+
+
+def _certificate(shortlist: Shortlist) -> dict[str, int | bool] | None:
+    """Put what is proven about the order in numbers; null where nothing is."""
+    proof = shortlist.certificate
+    return None if proof is None else {**asdict(proof), "holds": proof.holds}
 
 
 def to_markdown(shortlist: Shortlist) -> bytes:

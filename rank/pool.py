@@ -189,7 +189,7 @@ def _judged(
     checks: tuple[tuple[str, Callable[[Evaluation], NDArray[np.bool_]]], ...] = (
         (_NO_SIZES if brief.counts_losses else _NO_AREA, lambda f: np.isfinite(f.merit)),
         (_TOO_LARGE, lambda f: np.asarray(f.area <= most_area * (1 + _ROUNDING))),
-        (_INEFFICIENT, lambda f: np.asarray(f.worst_efficiency >= _floor(brief))),
+        (_INEFFICIENT, lambda f: np.asarray(f.worst_efficiency >= efficiency_floor(brief))),
         (_NOT_DRIVEN, lambda f: np.asarray((f.floating_drives == 0) | (brief.drive == "any"))),
     )
     for reason, passes in checks:
@@ -204,7 +204,7 @@ def _both(table: ConverterTable, scores: Scores, rows: NDArray[np.bool_]) -> tup
     return table.take(rows), rows_of(scores, rows)
 
 
-def _floor(brief: Brief) -> float:
+def efficiency_floor(brief: Brief) -> float:
     """Efficiency that the worst input must reach, or minus infinity."""
     if brief.efficiency_floor is None or brief.objective in ("conduction-area", "power-density"):
         return -np.inf

@@ -253,7 +253,9 @@ def shortlist(brief: Brief, *, top: int = 10, include: Sequence[Converter] = ())
     """
     if top < 1:
         raise CapmusterError(f"top: {top} is too small", accepted="1 or more")
-    certified = certify(gather(brief, include), brief, top)
+    pool = gather(brief, include)
+    names = family_names(int(max(pool.capacitors, default=1))) if brief.counts_losses else {}
+    certified = certify(pool, brief, top, names.keys(), [one.id for one in include])
     pool = certified.pool
     place_of = {one: k + 1 for k, one in enumerate(pool.ids.tolist())} if include else {}
     included = tuple(

@@ -195,3 +195,37 @@ def test_a_tree_that_is_no_chain_is_still_the_same_converter():
         expected = 2 * ohms * sum(float(s.multiplier) ** 2 for s in found.network.switches)
         assert z.fast[0] == pytest.approx(expected, rel=1e-9)
     assert trees != chain
+
+
+@pytest.mark.parametrize(("name", "top"), [("greenhouse-node-losses", 4), ("pump-shelf-losses", 4)])
+def test_the_order_of_shipped_briefs_is_proven(name, top):
+    found = shortlist(load_brief(name), top=top)
+    assert found.certificate.holds
+    assert found.certificate.places == top
+    # What is proven also holds for the family member that the best candidate is compared with.
+    place = found.best_family_place - 1
+    alone = exact_choice(found.pool.converter(place), found.brief)
+    assert found.pool.evaluation.merit[place] == pytest.approx(alone.sized.merit[0], rel=1e-9)
+    assert found.gain_over_family >= 1.0
+
+
+def test_a_free_duty_is_never_worse_and_has_no_proof_of_the_order():
+    free = shortlist(replace(NODE, duty=None), top=3)
+    assert shortlist(NODE, top=3).certificate is not None
+    assert free.certificate is None
+    assert free.frame["duty_phase_1"].between(0.05, 0.95).all()
+    for duty in (0.5, float(free.frame["duty_phase_1"][1]), 0.4):
+        fixed = gather(replace(NODE, duty=duty))
+        merit = dict(zip(fixed.ids.tolist(), fixed.evaluation.merit.tolist(), strict=True))
+        for name, best in zip(
+            free.pool.ids[:3].tolist(), free.pool.evaluation.merit[:3].tolist(), strict=True
+        ):
+            assert best <= merit[name] * (1 + 1e-3)  # the classes of either are local optima
+
+
+def test_what_the_user_puts_in_is_found_exactly_too():
+    converter = gather(NODE).converter(9)
+    found = shortlist(NODE, top=2, include=[converter])
+    place = found.included[0].place - 1
+    alone = exact_choice(converter, NODE)
+    assert found.pool.evaluation.merit[place] == pytest.approx(alone.sized.merit[0], rel=1e-9)

@@ -41,8 +41,8 @@ def find(drives, *nodes):
 
 
 def test_a_halver_with_n_channel_devices_by_hand():
-    # At 3.7 V in the switch from C1- to ground has its source at ground; the one from the input to C1+ has it at
-    # the input while it conducts, and needs a gate above all rails (common practice: bootstrap).
+    # The switch from C1- to ground has its source at ground; the one from the input to C1+ has it at the input
+    # while it conducts, and needs a gate above all rails (common practice: bootstrap).
     drives = drives_of("O-G/I-O", with_classes("nmos-3v3"))
     low = find(drives, "C1-", "G")
     assert (low.source, low.gate, low.supply) == (
@@ -64,7 +64,7 @@ def test_the_lowest_input_decides():
 
 
 def test_a_p_channel_device_serves_at_the_input():
-    # Its source is at the input while it conducts and while it blocks; the gate goes down by the drive voltage.
+    # Its source is at the input in both phases; the gate goes down by the drive voltage.
     higher = {"input_minimum": 3.4, "required": 1.3}
     drives = drives_of("O-G/I-O", with_classes("pmos-3v3"), **higher)
     high = find(drives, "I", "C1+")
