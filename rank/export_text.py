@@ -11,15 +11,18 @@ from capmuster.rank.quantity import format_quantity
 from capmuster.rank.summary import assumptions, verdict
 
 if TYPE_CHECKING:
+    from collections.abc import Sequence
+
     from capmuster.rank.elements import Element
     from capmuster.rank.shortlist import Column, Shortlist
 
 _UNITS = {"mm2": "mm²", "S/mm2": "S/mm²", "W/mm2": "W/mm²", "ohm": "Ω", "1": "%"}
 
 
-def to_csv(shortlist: Shortlist) -> bytes:
-    """One row per candidate; version and fingerprints in the last columns."""
-    frame = shortlist.frame.assign(**shortlist.provenance)
+def to_csv(shortlist: Shortlist, columns: Sequence[str] | None = None) -> bytes:
+    """One row per candidate, with all columns or some; version and fingerprints in the last columns."""
+    frame = shortlist.frame if columns is None else shortlist.frame[list(columns)]
+    frame = frame.assign(**shortlist.provenance)
     return frame.to_csv(index=False, lineterminator="\n").encode()
 
 

@@ -163,6 +163,20 @@ def test_rank_csv_json_and_table_agree(called):
     assert found["units"]["area_mm2"] == "mm2"
 
 
+def test_rank_shows_the_columns_that_are_asked_for(called):
+    names = "wiring,area_mm2,efficiency_minimum,id"
+    arguments = ("rank", "pump-shelf", "--top", "3", "--columns", names)
+    rows = list(csv.DictReader(io.StringIO(called(*arguments, "--format", "csv"))))
+    assert list(rows[0])[:4] == names.split(",")
+    every = list(csv.DictReader(io.StringIO(called(*arguments[:4], "--format", "csv"))))
+    assert [row["area_mm2"] for row in rows] == [row["area_mm2"] for row in every]
+    lines = called(*arguments).splitlines()
+    heading = next(line for line in lines if line.startswith("wiring"))
+    assert heading.split("  ")[0] == "wiring"
+    assert "area [mm²]" in heading
+    assert any(line.startswith(rows[0]["wiring"]) and line.endswith(rows[0]["id"]) for line in lines)
+
+
 def test_the_table_of_rank_fits_a_wide_terminal(called):
     for brief in ("greenhouse-node", "greenhouse-node-regulated", "pump-shelf"):
         lines = called("rank", brief, "--top", "5").splitlines()

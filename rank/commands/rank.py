@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 import click
 
 if TYPE_CHECKING:
-    from collections.abc import Mapping
+    from collections.abc import Mapping, Sequence
 
     from capmuster.rank.brief import Brief
     from capmuster.rank.shortlist import Shortlist
@@ -70,7 +70,7 @@ _GROUPS = (
     ("ceiling_minimum", "ceiling_maximum", "ceiling [%] at V_in"),
 )
 _PREFIXED = {"W": "W", "Hz": "Hz", "ohm": "Ω", "W/mm2": "W/mm²", "S/mm2": "S/mm²"}
-_FLUSH_LEFT = {"id", "families", "pareto"}
+_FLUSH_LEFT = {"id", "families", "pareto", "wiring"}
 _FAMILIES_WIDTH = 24
 _LEGEND = (
     "G: output conductance 1/R_out at that area. Ceiling: required output over M V_in.\n"
@@ -91,7 +91,8 @@ _LOSS_LEGEND = (
 @click.command(
     name="rank",
     epilog="\b\nExamples:\n  capmuster rank greenhouse-node --top 5\n"
-    "  capmuster rank my-rail.toml --include 'I-G/O-I' --format csv",
+    "  capmuster rank my-rail.toml --include 'I-G/O-I' --format csv\n"
+    "  capmuster rank pump-shelf --columns place,area_mm2,wiring",
 )
 @click.argument("brief")
 @click.option("--top", type=int, default=10, show_default=True, metavar="K", help="Show the best K.")
@@ -102,6 +103,11 @@ _LOSS_LEGEND = (
     help="Rank this wiring (or id) with the rest and say where it stands; may be given several times.",
 )
 @click.option(
+    "--columns",
+    metavar="NAMES",
+    help="Show these columns, in this order: names as in CSV, separated by commas.",
+)
+@click.option(
     "--format",
     "form",
     type=click.Choice(["table", "csv", "json"]),
@@ -109,7 +115,7 @@ _LOSS_LEGEND = (
     show_default=True,
     help="How rows are written.",
 )
-def command(brief: str, top: int, include: tuple[str, ...], form: str) -> None:
+def command(*, brief: str, top: int, include: tuple[str, ...], columns: str | None, form: str) -> None:
     """Rank every converter that can do the job of BRIEF.
 
     BRIEF is the name of a shipped brief or a TOML file. Its objective decides what comes first: the least
@@ -118,6 +124,7 @@ def command(brief: str, top: int, include: tuple[str, ...], form: str) -> None:
     """
     from capmuster.rank.commands.ranking import ranked  # noqa: PLC0415 -- nothing heavy before it is needed
 
+    shown = None if columns is None else _chosen(brief, columns, form)
     found = ranked(brief, top, include)
     if form == "json":
         from capmuster.rank.export_text import to_json  # noqa: PLC0415
@@ -126,18 +133,42 @@ def command(brief: str, top: int, include: tuple[str, ...], form: str) -> None:
     elif form == "csv":
         from capmuster.rank.export_text import to_csv  # noqa: PLC0415
 
-        click.echo(to_csv(found).decode(), nl=False)
+        click.echo(to_csv(found, shown).decode(), nl=False)
     else:
-        _write_table(found)
+        _write_table(found, shown)
 
 
-def _write_table(found: Shortlist) -> None:
+def _chosen(brief: str, columns: str, form: str) -> list[str]:
+    """Read names of columns, before any work is done."""
+    from capmuster.enumerate.errors import CapmusterError  # noqa: PLC0415
+    from capmuster.rank.brief import load_brief  # noqa: PLC0415
+    from capmuster.rank.columns import columns_of  # noqa: PLC0415
+
+    if form == "json":
+        raise CapmusterError("columns: JSON holds them all", accepted="--columns with a table or CSV")
+    known = [column.name for column in columns_of(load_brief(brief))]
+    names = [name.strip() for name in columns.split(",")]
+    for name in names:
+        if name not in known:
+            raise CapmusterError(f"columns: unknown column {name!r}", accepted=", ".join(known))
+        if names.count(name) > 1:
+            raise CapmusterError(f"columns: {name!r} is named twice", accepted="each column once")
+    return names
+
+
+def _write_table(found: Shortlist, shown: list[str] | None) -> None:
     from capmuster.rank.summary import assumptions, verdict  # noqa: PLC0415
 
     for name, value in assumptions(found.brief):
         click.echo(f"{name:20} {value}")
     click.echo()
-    if len(found):
+    if len(found) and shown is not None:
+        from capmuster.rank.export_text import heading  # noqa: PLC0415
+
+        headings = {column.name: heading(column) for column in found.columns}
+        click.echo(_table(found, {name: headings[name] for name in shown}, groups=()))
+        click.echo()
+    elif len(found):
         click.echo(_table(found, _shown(found.brief)))
         click.echo(f"\n{_LOSS_LEGEND if found.brief.counts_losses else _LEGEND}\n")
         click.echo(_table(found, _EXACT))
@@ -158,7 +189,9 @@ def _shown(brief: Brief) -> dict[str, str]:
     return dict(items)
 
 
-def _table(found: Shortlist, headings: Mapping[str, str]) -> str:
+def _table(
+    found: Shortlist, headings: Mapping[str, str], groups: Sequence[tuple[str, str, str]] = _GROUPS
+) -> str:
     from capmuster.rank.export_text import cell  # noqa: PLC0415
     from capmuster.rank.rows import figures, prefixed, text_table  # noqa: PLC0415
 
@@ -183,7 +216,7 @@ def _table(found: Shortlist, headings: Mapping[str, str]) -> str:
         [name not in _FLUSH_LEFT for name in names],
         [
             (names.index(first), names.index(last), text)
-            for first, last, text in _GROUPS
+            for first, last, text in groups
             if first in shown and last in shown
         ],
     )
