@@ -60,7 +60,9 @@ def test_all_element_areas_against_slsqp(seed):
         options={"ftol": 1e-15, "maxiter": 1000},
     )
     assert log_impedance(np.log(ours)) == pytest.approx(np.log(result.impedance), abs=1e-12)
-    assert found.fun == pytest.approx(np.log(result.impedance), abs=1e-8)
+    # The solver lets its areas add up to a little more than allowed; impedance goes with 1/area.
+    within = found.fun + np.log(np.exp(found.x).sum() / area)
+    assert within == pytest.approx(np.log(result.impedance), abs=1e-8)
     np.testing.assert_allclose(np.exp(found.x), ours, rtol=1e-2, atol=1e-4 * area)
 
 
