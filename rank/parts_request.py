@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from dataclasses import asdict, dataclass
+from dataclasses import dataclass
 from typing import TYPE_CHECKING, Final, Literal
 
 from capmuster.enumerate.errors import CapmusterError
@@ -148,7 +148,12 @@ _LIMITS: Final = (
 )
 
 
-def _faults(request: PartsRequest) -> Iterator[Fault]:
+def _faults(request: PartsRequest) -> list[Fault]:
+    """Find what is wrong with the values; how they go together only where they are sound."""
+    return list(_unsound(request)) or list(_contradictions(request))
+
+
+def _unsound(request: PartsRequest) -> Iterator[Fault]:
     for names, least, closed, most, accepted in _LIMITS:
         for name in names:
             value = getattr(request, name)
@@ -158,12 +163,12 @@ def _faults(request: PartsRequest) -> Iterator[Fault]:
         if not 0 < frequency < math.inf:
             path = ("parts", "frequencies", position)
             yield Fault(path, f"value {frequency:g} is not allowed", "a finite value above 0")
-    if request.loss is not None and request.efficiency is not None:
+
+
+def _contradictions(request: PartsRequest) -> Iterator[Fault]:
+    given = [name for name in ("loss", "efficiency") if getattr(request, name) is not None]
+    if len(given) > 1:
         yield Fault(("parts", "loss"), "loss and efficiency are both given", "one target, or none")
-
-
-def plain(request: PartsRequest) -> dict[str, object]:
-    """Every setting by name, for tables and files; the stock by the names of its catalogs."""
-    values = asdict(request)
-    values["stock"] = ", ".join(request.stock.names)
-    return values
+    elif given and request.least == "loss":
+        accepted = "least = footprint or price, or no target"
+        yield Fault(("parts", given[0]), "is a target, and loss is made least", accepted)

@@ -24,17 +24,21 @@ from capmuster.enumerate.wiring import Converter
 from capmuster.rank.brief import load_brief
 from capmuster.rank.cli import main
 from capmuster.rank.discrete.blends import LOOP, QUADRATIC
+from capmuster.rank.discrete.bulk import pool_bounds
 from capmuster.rank.discrete.certify import certify
 from capmuster.rank.discrete.choose import choose_parts
 from capmuster.rank.discrete.labels import search
 from capmuster.rank.discrete.options import NoPartError, OptionBook, Units
-from capmuster.rank.discrete.problem import pose, resolved, stacked
+from capmuster.rank.discrete.problem import pose, reported, resolved, stacked
+from capmuster.rank.discrete.relaxed import relax
 from capmuster.rank.discrete.report import COLUMNS, ELEMENT_COLUMNS, TERMS, document, element_frame, frame
 from capmuster.rank.discrete.slots import slots_of
 from capmuster.rank.parts import Stock
 from capmuster.rank.pool import gather
+from capmuster.rank.switching import switch_network
 
 SHELF = load_brief("pump-shelf")
+HELD = replace(SHELF, use="regulated", required=10.0, efficiency_floor=None, objective="least-loss", duty=0.4)
 QUARTERS = replace(SHELF, ratios=(Fraction(1, 4),), most_capacitors=3)
 
 
@@ -126,10 +130,53 @@ def test_a_general_integer_solver_finds_no_better_parts():
     assert result.fun >= ours * math.cos(angles[1] / 2) * (1 - 1e-7)
 
 
+@pytest.mark.parametrize(
+    ("brief", "changes"),
+    [
+        (SHELF, {}),
+        (SHELF, {"least": "price", "footprint": None, "efficiency": 0.97, "series": 2}),
+        (HELD, {"frequencies": (60e3, 120e3)}),
+    ],
+    ids=["loss", "price", "regulated"],
+)
+def test_bounds_of_a_pool_are_those_of_its_candidates_one_by_one(brief, changes):
+    request = resolved(replace(SHELF.parts, **changes), brief)
+    pool = gather(replace(brief, objective="conduction-area", duty=0.5, area=None))
+    units = Units.of(request)
+    books = [OptionBook(request, units, frequency, (True, True)) for frequency in request.frequencies]
+
+    def problems(converter):
+        slots = slots_of(converter, brief)
+        return [pose(slots, converter.ratio, brief, book, QUADRATIC) for book in books]
+
+    seeds = [
+        problems(Converter.parse(code)) for code in ("O-G/a-O O-G/b-a O-G/I-b", "O-G/a-O a-O/O-G a-G/I-a")
+    ]
+    prices = [[relax(seed[b]).multipliers for seed in seeds] for b in range(len(books))]
+    known = pool_bounds(pool, brief, books, prices, QUADRATIC)
+    rng = np.random.default_rng(1)
+    able, lacking = np.flatnonzero(~known.lacking), np.flatnonzero(known.lacking)
+    for place in [*rng.choice(able, 40, replace=False), *lacking[:10]]:
+        try:
+            posed = problems(pool.converter(place))
+        except NoPartError:
+            assert known.lacking[place]
+            continue
+        assert not known.lacking[place]
+        expected = min(
+            reported(problem, units, max(one.bound(problem) for one in here))
+            for problem, here in zip(posed, prices, strict=True)
+        )
+        if known.bounds[place] < math.inf:
+            assert known.bounds[place] == pytest.approx(expected, rel=1e-9)
+        else:  # so small a budget that the least of every element is above it, or no impedance is left
+            assert all(search(problem).selection is None for problem in posed)
+
+
 def test_finalists_are_in_order_and_complete():
     found = choose_parts(SHELF, SHELF.parts, top=4)
     assert [one.objective for one in found.finalists] == sorted(one.objective for one in found.finalists)
-    assert found.searched <= found.screened == found.candidates
+    assert len(found) <= found.searched < found.candidates
     table, elements = frame(found), element_frame(found)
     assert list(table.columns) == [column.name for column in COLUMNS]
     assert list(elements.columns) == [column.name for column in ELEMENT_COLUMNS]
@@ -149,12 +196,16 @@ def test_finalists_are_in_order_and_complete():
         assert row.exact_impedance_ohm >= (loop + lead) * (1 - 1e-9)
 
 
-def test_an_included_wiring_is_ranked_and_little_screening_is_said():
+def test_an_included_wiring_is_ranked_clean_or_not():
     wiring = Converter.parse("O-G/a-O O-G/b-a O-G/I-b")
-    found = choose_parts(SHELF, SHELF.parts, top=2, include=[wiring], screened=3)
-    assert found.screened == 4
-    assert any(one.converter == wiring for one in found.finalists)
-    assert f"of the 4 candidates looked at, of {found.candidates}, has less loss" in found.certificate
+    found = choose_parts(SHELF, SHELF.parts, top=2, include=[wiring])
+    assert found.finalists[1].converter == wiring
+    plain = choose_parts(SHELF, SHELF.parts, top=2)
+    assert [one.objective for one in plain.finalists] == [one.objective for one in found.finalists]
+    idle = Converter.parse("O-G/a-O G-a/a-G G-a/I-a")
+    assert not switch_network(idle).clean
+    alone_there = choose_parts(QUARTERS, SHELF.parts, top=1, include=[idle])
+    assert alone_there.candidates == choose_parts(QUARTERS, SHELF.parts, top=1).candidates + 1
 
 
 def test_without_parts_or_room_nothing_is_found_and_the_reason_is_counted():

@@ -133,11 +133,9 @@ def _changed(request: PartsRequest, changes: dict[str, object]) -> PartsRequest:
     for name in ("least", "series"):
         if changes[name] is not None:
             values[name] = changes[name]
-    # A target given here takes the place of the brief's other one.
-    if "loss" in values and "efficiency" not in values:
-        values["efficiency"] = None
-    elif "efficiency" in values and "loss" not in values:
-        values["loss"] = None
+    # What is given here takes the place of the brief's targets.
+    if values.get("least") == "loss" or "loss" in values or "efficiency" in values:
+        values = {"loss": None, "efficiency": None, **values}
     return replace(request, **values)  # type: ignore[arg-type]  # each of its field's type
 
 

@@ -9,18 +9,22 @@ from __future__ import annotations
 
 import math
 from collections import Counter
+from contextlib import suppress
 from dataclasses import dataclass, replace
 from heapq import heapify, heappop, heappush
 from typing import TYPE_CHECKING, Final
 
+import numpy as np
+
 from capmuster.enumerate.errors import CapmusterError
 from capmuster.rank.discrete.blends import QUADRATIC
+from capmuster.rank.discrete.bulk import pool_bounds
 from capmuster.rank.discrete.certify import certify
 from capmuster.rank.discrete.design import condition, exact_impedance, fill
 from capmuster.rank.discrete.finalists import Finalist, PartsShortlist
 from capmuster.rank.discrete.labels import search
 from capmuster.rank.discrete.options import NoPartError, OptionBook, Units
-from capmuster.rank.discrete.problem import operating_input, pose, resolved
+from capmuster.rank.discrete.problem import operating_input, pose, reported, resolved
 from capmuster.rank.discrete.relaxed import relax
 from capmuster.rank.discrete.slots import slots_of
 
@@ -36,11 +40,10 @@ if TYPE_CHECKING:
     from capmuster.rank.discrete.relaxed import Relaxed
     from capmuster.rank.discrete.slots import Slot
     from capmuster.rank.parts_request import PartsRequest
+    from capmuster.rank.pool import Pool
 
-MOST_SCREENED: Final = 3000
-"""Candidates that are looked at: the first ones by area."""
-
-_SEEDS: Final = 6  # candidates whose multipliers bound all others at first
+_SEEDS: Final = 16  # candidates, each of another ratio, whose multipliers bound all others at first
+_HALF: Final = 0.5
 _TIE: Final = 1e-9  # relative: objectives this close are equal
 _NO_PART: Final = "no part of the stock stands a voltage"
 _NO_CHOICE: Final = "no choice of parts keeps the limits"
@@ -54,11 +57,8 @@ class _Case:
     problem: Problem
 
     def reported(self, value: float) -> float:
-        """Bring a value of what is made least to W with the loss that no choice changes, mm2 or EUR."""
-        units = self.book.units
-        if self.problem.least == "loss":
-            return value + self.problem.offset
-        return value / (units.per_mm2 if self.problem.least == "footprint" else units.per_eur)
+        """Bring a value of what is made least to what is reported."""
+        return reported(self.problem, self.book.units, value)
 
 
 @dataclass(frozen=True, slots=True)
@@ -67,27 +67,20 @@ class _Entrant:
 
     Attributes
     ----------
-    bound
-        No choice of its parts is below it, in what is reported.
     relaxed
-        The continuous bound of each problem; empty as long as only other candidates' multipliers were tried.
+        The continuous bound of each problem.
     """
 
     converter: Converter
     place: int
     slots: tuple[Slot, ...]
     cases: tuple[_Case, ...]
-    bound: float
-    relaxed: tuple[Relaxed, ...] = ()
+    relaxed: tuple[Relaxed, ...]
 
-    def order(self) -> tuple[float, int]:
-        return self.bound, self.place
-
-    def tightened(self) -> _Entrant:
-        """Find the continuous bounds."""
-        relaxed = tuple(relax(case.problem) for case in self.cases)
-        bounds = [case.reported(one.bound) for case, one in zip(self.cases, relaxed, strict=True)]
-        return replace(self, relaxed=relaxed, bound=max(self.bound, min(bounds)))
+    @property
+    def bound(self) -> float:
+        """No choice of its parts is below it, in what is reported."""
+        return min(case.reported(one.bound) for case, one in zip(self.cases, self.relaxed, strict=True))
 
 
 @dataclass(frozen=True, slots=True)
@@ -116,15 +109,15 @@ def choose_parts(
     top: int = 5,
     include: Sequence[Converter] = (),
     blend: Blend = QUADRATIC,
-    screened: int = MOST_SCREENED,
 ) -> PartsShortlist:
     """Find the candidates of a brief that are best when built from parts, and the parts for each.
 
     Parameters
     ----------
     brief
-        What is asked for. Its candidates are those of continuous sizing; where that counts conduction only,
-        its area budget is left out, since what counts here is the footprint of parts.
+        What is asked for. Every converter that holds its output is a candidate, and keeps its floor of
+        efficiency where that counts conduction only; area budgets are left out, since what counts here is
+        the footprint of parts.
     request
         What is asked of the parts.
     top
@@ -133,8 +126,6 @@ def choose_parts(
         Converters of the user's own, ranked with the rest.
     blend
         How R_SSL and R_FSL are joined.
-    screened
-        Most candidates to look at, the first by area, besides the included ones.
 
     Raises
     ------
@@ -146,33 +137,43 @@ def choose_parts(
     if top < 1:
         raise CapmusterError(f"top: {top} is too small", accepted="1 or more")
     request = resolved(request, brief)
-    free = brief if brief.counts_losses else replace(brief, area=None, silicon_area=None, capacitor_area=None)
-    pool = gather(free, include)
-    wanted = {one.id for one in include}
-    places = [k for k in range(len(pool)) if k < screened or str(pool.ids[k]) in wanted]
+    pool = gather(_without_areas(brief), include)
     books = _books(request)
-    left_out: Counter[str] = Counter()
-    entrants = []
-    for k in places:
-        try:
-            entrants.append(_entered(pool.converter(k), k + 1, brief, books, blend))
-        except NoPartError:
-            left_out[_NO_PART] += 1
+    seeds = _seeds(pool, brief, books, blend)
+    prices = [
+        [one.multipliers for one in at_frequency if one.multipliers is not None]
+        for at_frequency in zip(*(seed.relaxed for seed in seeds), strict=True)
+    ] or [[] for _ in books]
+    known = pool_bounds(pool, brief, books, prices, blend)
+    # A wiring of the user's own may have idle switches, whose order the batch does not settle.
+    included = np.isin(pool.ids, [one.id for one in include])
+    bounds = np.where(included, -np.inf, known.bounds)
+    left_out = Counter(
+        {
+            _NO_PART: int((known.lacking & ~included).sum()),
+            _NO_CHOICE: int((np.isposinf(bounds) & ~known.lacking).sum()),
+        }
+    )
+    queue = [(bound, place) for place, bound in enumerate(bounds.tolist()) if bound < math.inf]
+    heapify(queue)
+    looked_at: dict[int, _Entrant] = {}
     ranked: list[_Found] = []
     searched, exact = 0, True
-    queue = [(one.order(), one) for one in _bounded(entrants)]
-    heapify(queue)
     while queue:
         # Best bound first: once a bound is above the last place, so are all that are left.
-        _, entrant = heappop(queue)
-        if len(ranked) >= top and entrant.bound > ranked[-1].objective * (1 + _TIE):
+        bound, place = heappop(queue)
+        if len(ranked) >= top and bound > ranked[-1].objective * (1 + _TIE):
             break
-        if not entrant.relaxed:
-            tightened = entrant.tightened()
-            heappush(queue, (tightened.order(), tightened))
+        if place not in looked_at:
+            try:
+                looked_at[place] = _entered(pool.converter(place), place + 1, brief, books, blend)
+            except NoPartError:
+                left_out[_NO_PART] += 1
+            else:
+                heappush(queue, (max(bound, looked_at[place].bound), place))
             continue
         searched += 1
-        found, complete = _searched(entrant)
+        found, complete = _searched(looked_at[place])
         exact = exact and complete
         if found is None:
             left_out[_NO_CHOICE] += 1
@@ -184,11 +185,36 @@ def choose_parts(
         blend=blend,
         finalists=tuple(_finished(found, brief, blend) for found in ranked),
         candidates=len(pool),
-        screened=len(places),
         searched=searched,
         exact=exact,
-        left_out=dict(left_out),
+        left_out={reason: count for reason, count in left_out.items() if count},
     )
+
+
+def _without_areas(brief: Brief) -> Brief:
+    """Return the brief of which every converter that can hold the output is a candidate."""
+    return replace(
+        brief,
+        objective="conduction-area",
+        area=None,
+        silicon_area=None,
+        capacitor_area=None,
+        frequency_minimum=None,
+        duty=_HALF,
+        profile=(),
+        efficiency_floor=None if brief.counts_losses else brief.efficiency_floor,
+    )
+
+
+def _seeds(pool: Pool, brief: Brief, books: Sequence[OptionBook], blend: Blend) -> list[_Entrant]:
+    """Look at the first candidate of each of a few ratios."""
+    _, first = np.unique(pool.evaluation.ratio, return_index=True)
+    few = np.unique(np.linspace(0, len(first) - 1, min(_SEEDS, len(first))).round().astype(int))
+    seeds = []
+    for place in first[few].tolist():
+        with suppress(NoPartError):
+            seeds.append(_entered(pool.converter(place), place + 1, brief, books, blend))
+    return seeds
 
 
 def _books(request: PartsRequest) -> tuple[OptionBook, ...]:
@@ -204,28 +230,10 @@ def _books(request: PartsRequest) -> tuple[OptionBook, ...]:
 def _entered(
     converter: Converter, place: int, brief: Brief, books: Sequence[OptionBook], blend: Blend
 ) -> _Entrant:
-    """Pose the problems of one candidate; nothing is known of them yet."""
+    """Pose and relax the problems of one candidate."""
     slots = slots_of(converter, brief)
     cases = tuple(_Case(book, pose(slots, converter.ratio, brief, book, blend)) for book in books)
-    return _Entrant(converter, place, slots, cases, bound=-math.inf)
-
-
-def _bounded(entrants: Sequence[_Entrant]) -> list[_Entrant]:
-    """Bound every candidate with the multipliers of a few, which costs next to nothing and holds as well."""
-    seeds = [one.tightened() for one in entrants[:: max(1, len(entrants) // _SEEDS)]]
-    prices = [
-        [one.multipliers for one in at_frequency if one.multipliers is not None]
-        for at_frequency in zip(*(seed.relaxed for seed in seeds), strict=True)
-    ]
-    known = {one.place: one for one in seeds}
-    bounded = []
-    for entrant in entrants:
-        bounds = [
-            case.reported(max((m.bound(case.problem) for m in here), default=-math.inf))
-            for case, here in zip(entrant.cases, prices, strict=True)
-        ]
-        bounded.append(known.get(entrant.place) or replace(entrant, bound=min(bounds)))
-    return bounded
+    return _Entrant(converter, place, slots, cases, tuple(relax(case.problem) for case in cases))
 
 
 def _solved(problem: Problem, relaxed: Relaxed) -> Outcome:
@@ -281,7 +289,7 @@ def _finished(found: _Found, brief: Brief, blend: Blend) -> Finalist:
 
     return Finalist(
         converter=entrant.converter,
-        pool_place=entrant.place,
+        area_place=entrant.place,
         frequency=book.frequency,
         fillings=fillings,
         operating=at(operating_input(brief)),

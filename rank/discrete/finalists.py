@@ -25,8 +25,8 @@ class Finalist:
     ----------
     converter
         The converter.
-    pool_place
-        Its place among the brief's candidates in continuous sizing, counted from 1.
+    area_place
+        Its place by the least area for conduction in continuous sizing, counted from 1.
     frequency
         Switching frequency [Hz], the best of those asked for.
     fillings
@@ -45,7 +45,7 @@ class Finalist:
     """
 
     converter: Converter
-    pool_place: int
+    area_place: int
     frequency: float
     fillings: tuple[Filling, ...]
     operating: Condition
@@ -97,9 +97,7 @@ class PartsShortlist:
     finalists
         Best first.
     candidates
-        Candidates that meet the brief.
-    screened
-        How many of them, the first by area, were looked at.
+        Converters that can hold the output.
     searched
         For how many of these the best parts were searched; every other one's bound is above the last place.
     exact
@@ -113,7 +111,6 @@ class PartsShortlist:
     blend: Blend
     finalists: tuple[Finalist, ...]
     candidates: int
-    screened: int
     searched: int
     exact: bool
     left_out: dict[str, int]
@@ -136,13 +133,8 @@ class PartsShortlist:
         )
         if not self.exact:
             return f"{parts}. Some searches were cut short: another candidate might be better."
-        which = (
-            f"all {self.candidates} candidates"
-            if self.screened == self.candidates
-            else f"the {self.screened} candidates looked at, of {self.candidates},"
-        )
-        place = len(self.finalists)
-        return f"{parts}. No other of {which} has less {self.request.least} than place {place}."
+        others = f"No other of all {self.candidates} candidates"
+        return f"{parts}. {others} has less {self.request.least} than place {len(self.finalists)}."
 
     @property
     def cautions(self) -> list[str]:

@@ -9,7 +9,7 @@ from __future__ import annotations
 import math
 from dataclasses import dataclass, field, fields, replace
 from fractions import Fraction
-from typing import TYPE_CHECKING, TypeAlias
+from typing import TYPE_CHECKING, Literal, TypeAlias, TypeVar
 
 import numpy as np
 
@@ -27,6 +27,9 @@ if TYPE_CHECKING:
 
     Floats: TypeAlias = NDArray[np.float64]
     Integers: TypeAlias = NDArray[np.int64]
+
+Kind = Literal["capacitor", "switch"]
+"""What an element is."""
 
 _ROUNDING = 1e-9  # relative: a voltage that is the rating but for rounding is the rating
 
@@ -107,6 +110,14 @@ def exact(value: float) -> Fraction:
     return Fraction(repr(float(value)))
 
 
+_Volts = TypeVar("_Volts", float, "NDArray[np.float64]")
+
+
+def lowered(voltage: _Volts) -> _Volts:
+    """Voltage [V] less the rounding that may have lifted it above a rating."""
+    return voltage * (1 - _ROUNDING)
+
+
 def _whole(values: Iterable[float], per: int) -> Integers:
     """Values in units of which ``per`` make one, exactly."""
     return np.array([int(exact(value) * per) for value in values], dtype=np.int64)
@@ -137,6 +148,7 @@ class OptionBook:
     frequency: float
     counts: tuple[bool, bool]
     _known: dict[tuple[str, float, float, bool], Options] = field(default_factory=dict, repr=False)
+    _steps: dict[str, Floats] = field(default_factory=dict, repr=False)
 
     def capacitor(self, voltage: float, bias: float, *, pruned: bool = True) -> Options:
         """Ways to build a capacitor.
@@ -155,11 +167,11 @@ class OptionBook:
         NoPartError
             If no part of the stock stands the voltage.
         """
-        key = ("capacitor", voltage, bias, pruned)
+        step = self._step("capacitor", voltage)
+        key = ("capacitor", step, bias, pruned)
         if key not in self._known:
-            self._known[key] = self._kept(
-                self._capacitors(voltage, bias), "capacitor", voltage, pruned=pruned
-            )
+            found = self._capacitors(step, bias)
+            self._known[key] = self._unbeaten(found) if pruned else found
         return self._known[key]
 
     def switch(self, voltage: float, blocking: float, *, idle: bool = False, pruned: bool = True) -> Options:
@@ -181,96 +193,121 @@ class OptionBook:
         NoPartError
             If no part of the stock stands the voltage.
         """
-        key = ("idle switch" if idle else "switch", voltage, blocking, pruned)
+        step = self._step("switch", voltage)
+        key = ("idle switch" if idle else "switch", step, blocking, pruned)
         if key not in self._known:
-            found = self._switches(voltage, blocking)
+            found = self._switches(step, blocking)
             if idle:
                 found = found.scaled(0.0, 0.0)
-            self._known[key] = self._kept(found, "switch", voltage, pruned=pruned)
+            self._known[key] = self._unbeaten(found) if pruned else found
         return self._known[key]
 
-    def _capacitors(self, voltage: float, bias: float) -> Options:
-        request = self.request
-        shelf = request.stock.capacitors
-        part, series, parallel = self._counts(
-            [one.rating for one in shelf], voltage, request.capacitor_derating, request.parallel_capacitors
-        )
-        least = request.capacitance == "least"
-        single = np.array(
-            [float(shelf[k].capacitance(bias / s, least=least)) for k, s in zip(part, series, strict=True)]
-        )
-        resistance = np.array([one.series_resistance for one in shelf])[part] * series / parallel
-        value = single * parallel / series
-        with np.errstate(divide="ignore"):
-            slow = 1 / (self.frequency * value)
-        nothing = np.zeros(len(part))
-        number = series * parallel
-        return Options(
-            part=part,
-            series=series,
-            parallel=parallel,
-            value=value,
-            slow=slow,
-            fast=resistance,
-            gate=nothing,
-            output=nothing,
-            footprint=_whole([one.footprint for one in shelf], self.units.per_mm2)[part] * number,
-            price=_whole([one.price for one in shelf], self.units.per_eur)[part] * number,
-        )
+    def steps(self, kind: Kind) -> Floats:
+        """Voltages [V], rising, between which the ways to build an element are the same.
 
-    def _switches(self, voltage: float, blocking: float) -> Options:
-        request = self.request
-        shelf = request.stock.switches
-        part, series, parallel = self._counts(
-            [one.rating if request.drive is None or one.drive <= request.drive else 0.0 for one in shelf],
-            voltage,
-            request.switch_derating,
-            request.parallel_switches,
-        )
-        number = series * parallel
-        value = np.array([one.resistance_at(request.temperature) for one in shelf])[part] * series / parallel
-        gate = np.array([one.gate_charge * one.drive for one in shelf])[part] * number * self.frequency
-        each = blocking / series
-        charge = np.array(
-            [float(shelf[k].output_charge_at(v)) for k, v in zip(part, each.tolist(), strict=True)]
-        )
-        mm2, eur = self.units.per_mm2, self.units.per_eur
-        footprint = _whole([one.footprint for one in shelf], mm2)[part] * number
-        price = _whole([one.price for one in shelf], eur)[part] * number
-        return Options(
-            part=part,
-            series=series,
-            parallel=parallel,
-            value=value,
-            slow=np.zeros(len(part)),
-            fast=value,
-            gate=gate,
-            output=charge * each * number * self.frequency,
-            footprint=footprint + _whole([request.driver_footprint], mm2),
-            price=price + _whole([request.driver_price], eur),
-        )
+        An element belongs to the first one that is not below what it must stand, and to none beyond the last.
+        """
+        if kind not in self._steps:
+            limits = self._limits(kind)
+            strings = np.outer(np.arange(1, self.request.series + 1), limits[limits > 0])
+            self._steps[kind] = np.unique(strings)
+        return self._steps[kind]
 
-    def _counts(
-        self, ratings: list[float], voltage: float, derating: float | None, most_parallel: int
-    ) -> tuple[Integers, Integers, Integers]:
-        """Part, series and parallel count of every way; a part of rating 0 is not used."""
-        limits = np.array(ratings) * (derating or 1.0)
-        usable = np.flatnonzero(limits > 0)
-        needed = np.maximum(np.ceil(voltage * (1 - _ROUNDING) / limits[usable]), 1).astype(np.int64)
-        stands = needed <= self.request.series
-        usable, needed = usable[stands], needed[stands]
-        parallel = np.tile(np.arange(1, most_parallel + 1), len(usable))
-        return np.repeat(usable, most_parallel), np.repeat(needed, most_parallel), parallel
-
-    def _kept(self, options: Options, kind: str, voltage: float, *, pruned: bool) -> Options:
-        options = options.take(np.isfinite(options.slow))
-        if not len(options):
+    def _step(self, kind: Kind, voltage: float) -> float:
+        steps = self.steps(kind)
+        place = int(np.searchsorted(steps, lowered(voltage)))
+        if place == len(steps):
             raise NoPartError(
                 f"no {kind} of the stock stands {format_quantity(voltage, 'V')} after derating",
                 accepted="parts of a higher rating, less derating, or more in series",
             )
-        if not pruned:
-            return options
+        return float(steps[place])
+
+    def _limits(self, kind: Kind) -> Floats:
+        """Derated rating of every part [V]; 0 for one that is not used."""
+        request = self.request
+        if kind == "capacitor":
+            return np.array([one.rating for one in request.stock.capacitors]) * (
+                request.capacitor_derating or 1.0
+            )
+        driven = [request.drive is None or one.drive <= request.drive for one in request.stock.switches]
+        ratings = np.array([one.rating for one in request.stock.switches])
+        return np.asarray(ratings * driven * (request.switch_derating or 1.0))
+
+    def _capacitors(self, voltage: float, bias: float) -> Options:
+        request, units = self.request, self.units
+        parts, strings = self._usable("capacitor", voltage)
+        shelf = [request.stock.capacitors[k] for k in parts.tolist()]
+        least = request.capacitance == "least"
+        single = np.array(
+            [
+                float(one.capacitance(bias / s, least=least))
+                for one, s in zip(shelf, strings.tolist(), strict=True)
+            ]
+        )
+        most = request.parallel_capacitors
+        parallel = np.tile(np.arange(1, most + 1), len(parts))
+        series = np.repeat(strings, most)
+        value = np.repeat(single, most) * parallel / series
+        nothing = np.zeros(len(value))
+        with np.errstate(divide="ignore"):
+            slow = 1 / (self.frequency * value)
+        found = Options(
+            part=np.repeat(parts, most),
+            series=series,
+            parallel=parallel,
+            value=value,
+            slow=slow,
+            fast=np.repeat(np.array([one.series_resistance for one in shelf]), most) * series / parallel,
+            gate=nothing,
+            output=nothing,
+            footprint=np.repeat(_whole([p.footprint for p in shelf], units.per_mm2), most)
+            * series
+            * parallel,
+            price=np.repeat(_whole([p.price for p in shelf], units.per_eur), most) * series * parallel,
+        )
+        return found.take(np.isfinite(slow))
+
+    def _switches(self, voltage: float, blocking: float) -> Options:
+        request, units = self.request, self.units
+        parts, strings = self._usable("switch", voltage)
+        shelf = [request.stock.switches[k] for k in parts.tolist()]
+        each = blocking / strings
+        # Loss of one part [W]: gate charge times drive, and output charge times blocking voltage.
+        gate = np.array([one.gate_charge * one.drive for one in shelf]) * self.frequency
+        output = self.frequency * np.array(
+            [float(one.output_charge_at(v)) * v for one, v in zip(shelf, each.tolist(), strict=True)]
+        )
+        most = request.parallel_switches
+        parallel = np.tile(np.arange(1, most + 1), len(parts))
+        series = np.repeat(strings, most)
+        number = series * parallel
+        resistance = np.array([one.resistance_at(request.temperature) for one in shelf])
+        value = np.repeat(resistance, most) * series / parallel
+        footprint = np.repeat(_whole([one.footprint for one in shelf], units.per_mm2), most) * number
+        price = np.repeat(_whole([one.price for one in shelf], units.per_eur), most) * number
+        return Options(
+            part=np.repeat(parts, most),
+            series=series,
+            parallel=parallel,
+            value=value,
+            slow=np.zeros(len(value)),
+            fast=value,
+            gate=np.repeat(gate, most) * number,
+            output=np.repeat(output, most) * number,
+            footprint=footprint + _whole([request.driver_footprint], units.per_mm2),
+            price=price + _whole([request.driver_price], units.per_eur),
+        )
+
+    def _usable(self, kind: Kind, voltage: float) -> tuple[Integers, Integers]:
+        """Parts that stand a voltage, and how many of them in series."""
+        limits = self._limits(kind)
+        parts = np.flatnonzero(limits > 0)
+        needed = np.maximum(np.ceil(lowered(voltage) / limits[parts]), 1).astype(np.int64)
+        stands = needed <= self.request.series
+        return parts[stands], needed[stands]
+
+    def _unbeaten(self, options: Options) -> Options:
         by_footprint, by_price = self.counts
         decisive = [options.slow, options.fast, options.fixed]
         decisive += [options.footprint.astype(np.float64)] if by_footprint else []

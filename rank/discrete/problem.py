@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 from collections import defaultdict
 from dataclasses import dataclass, replace
-from typing import TYPE_CHECKING, Final, TypeAlias
+from typing import TYPE_CHECKING, Final, TypeAlias, TypeVar
 
 import numpy as np
 
@@ -20,7 +20,7 @@ if TYPE_CHECKING:
 
     from capmuster.rank.brief import Brief
     from capmuster.rank.discrete.blends import Blend
-    from capmuster.rank.discrete.options import OptionBook, Options
+    from capmuster.rank.discrete.options import OptionBook, Options, Units
     from capmuster.rank.discrete.slots import Slot
     from capmuster.rank.parts_request import Aim, PartsRequest
 
@@ -149,12 +149,19 @@ class Problem:
         )
 
 
-def fast_factor(slot: Slot, brief: Brief) -> float:
-    """Return what resistance times squared multiplier counts for in R_FSL [1]; a free duty counts as 50 %."""
+def phase_factors(brief: Brief) -> tuple[float, tuple[float, float]]:
+    """Return what resistance times squared multiplier counts for in R_FSL [1].
+
+    Of a capacitor, and of a switch that is closed in phase 1 and in phase 2; a free duty is taken as 50 %.
+    """
     duty = brief.duty or _HALF
-    if slot.kind == "capacitor":
-        return 1 / duty + 1 / (1 - duty)
-    return 1 / duty if slot.phase == 1 else 1 / (1 - duty)
+    return 1 / duty + 1 / (1 - duty), (1 / duty, 1 / (1 - duty))
+
+
+def fast_factor(slot: Slot, brief: Brief) -> float:
+    """Return what the resistance of one element counts for; see `phase_factors`."""
+    of_capacitor, of_phase = phase_factors(brief)
+    return of_phase[slot.phase - 1] if slot.phase else of_capacitor
 
 
 def operating_input(brief: Brief) -> float:
@@ -245,7 +252,7 @@ def pose(
     NoPartError
         If no part of the stock stands some voltage.
     """
-    request, volts = book.request, operating_input(brief)
+    volts = operating_input(brief)
     alike: dict[tuple[str, Fraction, Fraction, float, float], list[str]] = defaultdict(list)
     for slot in slots:
         per_duty = fast_factor(slot, brief)
@@ -259,6 +266,18 @@ def pose(
             options = book.switch(voltage, operating, idle=not multiplier, pruned=pruned)
         squared = float(multiplier) ** 2
         groups.append(Group(tuple(names), options.scaled(squared, squared * per_duty)))
+    return replace(frame_of(ratio, brief, book, blend), groups=tuple(groups))
+
+
+def frame_of(ratio: Fraction, brief: Brief, book: OptionBook, blend: Blend) -> Problem:
+    """Pose the problem of any converter of a ratio, without its elements.
+
+    Parameters
+    ----------
+    ratio, brief, book, blend
+        As in `pose`.
+    """
+    request, volts = book.request, operating_input(brief)
     held = brief.use == "regulated"
     ideal_power = abs(float(ratio)) * volts * brief.current
     overhead = brief.technology.controller_power
@@ -279,7 +298,7 @@ def pose(
         None if budget is None else math.floor(exact(budget) * per) for budget, per in budget_unit
     )
     return Problem(
-        groups=tuple(groups),
+        groups=(),
         blend=blend,
         square_current=square,
         conducts=not held,
@@ -291,6 +310,16 @@ def pose(
         footprint=footprint,
         price=price,
     )
+
+
+_T = TypeVar("_T", float, "NDArray[np.float64]")
+
+
+def reported(problem: Problem, units: Units, value: _T) -> _T:
+    """Bring values of what is made least to what is reported: W of the whole loss, mm2 or EUR."""
+    if problem.least == "loss":
+        return value + problem.offset
+    return value / (units.per_mm2 if problem.least == "footprint" else units.per_eur)
 
 
 def stacked(problem: Problem, name: str) -> NDArray[np.float64]:

@@ -62,7 +62,7 @@ COLUMNS = (
     Column("gap", "gap", "", "relative distance of the bound"),
     Column("proven", "proven", "", "whether the parts are proven best"),
     Column("continuous_bound", "continuous bound", "", "no choice has less, by relaxation; same unit"),
-    Column("rank_place", "place by area", "", "place in continuous sizing"),
+    Column("area_place", "place by area", "", "place by the least area for conduction"),
     Column("wiring", "wiring", "", "wiring code"),
 )
 """Columns of a table with one row per finalist."""
@@ -124,7 +124,7 @@ def candidate_rows(found: PartsShortlist) -> list[Row]:
                 one.gap,
                 one.proven,
                 one.relaxed,
-                one.pool_place,
+                one.area_place,
                 one.converter.code,
             )
         )
@@ -251,7 +251,6 @@ def document(found: PartsShortlist) -> dict[str, object]:
         "cautions": found.cautions,
         "search": {
             "candidates": found.candidates,
-            "screened": found.screened,
             "searched": found.searched,
             "exhaustive": found.exact,
             "left_out": found.left_out,
