@@ -103,7 +103,7 @@ def _source(element: Element) -> str:
     return "" if element.source is None else " / ".join(f"{volts:.3g}" for volts in element.source)
 
 
-_TEXTUAL = {"id", "ratio", "families", "wiring", "pareto", "holds_output", "overstressed"}
+_TEXTUAL = {"id", "ratio", "families", "wiring", "pareto", "exact_fits", "overstressed"}
 _NOT_IN_MARKDOWN = {"wiring", "slow_limit_ohm", "fast_limit_ohm"}
 
 

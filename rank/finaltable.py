@@ -15,6 +15,8 @@ if TYPE_CHECKING:
 
     from capmuster.rank.finalist import Finalist, Overstress
 
+_ROUNDING = 1e-9
+
 COLUMNS = (
     Column("place", "place", "", "place in the shortlist, 1 is best"),
     Column("id", "id", "", "short id, derived from the wiring"),
@@ -33,7 +35,12 @@ COLUMNS = (
     Column("exact_ohm", "R_out, exact", "ohm", "exact output resistance, plate parasitics included"),
     Column("correction", "correction", "1", "exact over blend"),
     Column("ratio_shift", "ratio shift", "1", "no-load ratio over the ideal one less 1, by plate parasitics"),
-    Column("holds_output", "holds output", "", "whether the shifted ratio leaves any droop budget"),
+    Column(
+        "exact_fits",
+        "fits, exact",
+        "",
+        "whether the shifted ratio leaves any droop budget and the exact area is within the brief's",
+    ),
     Column("highest_ripple_V", "ripple", "V", "largest peak-to-peak voltage of a capacitor in use"),
     Column("inrush_A", "inrush", "A", "highest input current at start-up from empty capacitors"),
     Column(
@@ -51,7 +58,7 @@ _IN_SHORTLIST = (
     "blend_ohm",
     "correction",
     "ratio_shift",
-    "holds_output",
+    "exact_fits",
     "highest_ripple_V",
     "inrush_A",
     "start_up_stress",
@@ -90,7 +97,7 @@ def finalist_frame(best: Sequence[Finalist]) -> pd.DataFrame:
         "exact_ohm": [one.exact for one in best],
         "correction": [one.exact / one.blended for one in best],
         "ratio_shift": [one.ratio_shift for one in best],
-        "holds_output": [one.holds for one in best],
+        "exact_fits": [_fits(one) for one in best],
         "highest_ripple_V": [max(float(p.ripple.max()) for p in one.points) for one in best],
         "inrush_A": [one.inrush for one in best],
         "start_up_stress": [_stress(one) for one in best],
@@ -100,6 +107,18 @@ def finalist_frame(best: Sequence[Finalist]) -> pd.DataFrame:
     frame = pd.DataFrame({column.name: values[column.name] for column in COLUMNS})
     frame.attrs["units"] = {column.name: column.unit for column in COLUMNS}
     return frame
+
+
+def _fits(one: Finalist) -> bool:
+    def area(*kinds: str) -> float:
+        return sum(element.area for element in one.elements if element.kind in kinds)
+
+    budgets = (
+        (one.brief.area, area("capacitor", "switch")),
+        (one.brief.capacitor_area, area("capacitor")),
+        (one.brief.silicon_area, area("switch")),
+    )
+    return one.holds and all(most is None or used <= most * (1 + _ROUNDING) for most, used in budgets)
 
 
 def _stress(one: Finalist) -> float:

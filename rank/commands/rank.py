@@ -56,6 +56,7 @@ _EXACT = {
     "area_mm2": "model",
     "exact_area_mm2": "exact",
     "exact_place": "place by\nexact area",
+    "exact_fits": "fits",
     "blend_ohm": "blend",
     "exact_ohm": "exact",
     "ratio_shift": "ratio\nshift [%]",
@@ -78,7 +79,8 @@ _LEGEND = (
 )
 
 _EXACT_LEGEND = (
-    "Re-sized on the exact output impedance, plate parasitics and series resistance included.\n"
+    "Re-sized on the exact output impedance, plate parasitics and series resistance included. Fits: within\n"
+    "the brief's area still.\n"
     "Ratio shift: by plate parasitics at no load. Start-up stress: highest voltage over rating while the\n"
     "converter starts from empty capacitors at the highest input; above 100 % limit the rise of the input."
 )

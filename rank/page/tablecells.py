@@ -24,7 +24,7 @@ _PLAIN = (1e-4, 1e6)
 _SHARES = {"capacitor_utilisation", "switch_utilisation", "output_evenness"}
 _NAMES = {"id", "ratio"}
 _TEXTS = {"families", "wiring", "overstressed"}
-_FLAGS = {"pareto", "holds_output"}
+_FLAGS = {"pareto", "exact_fits"}
 _SHOWN = {
     "place",
     "id",
