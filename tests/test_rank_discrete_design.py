@@ -14,7 +14,7 @@ from capmuster.enumerate.wiring import Converter
 from capmuster.rank.brief import load_brief
 from capmuster.rank.circuit import circuit_of
 from capmuster.rank.discrete.blends import LOOP, QUADRATIC
-from capmuster.rank.discrete.design import condition, exact_impedance, fill
+from capmuster.rank.discrete.design import condition, exact_impedance, fill, holding_frequency
 from capmuster.rank.discrete.labels import search
 from capmuster.rank.discrete.problem import resolved
 
@@ -99,3 +99,24 @@ def test_impedance_against_a_circuit_that_is_switched(code, duty):
     # Between the loop blend and the sum of both limits (charge takes the way of least loss).
     assert float(LOOP.value(at.slow, at.fast)) <= (exact - lead) * (1 + 1e-9)
     assert exact - lead <= at.slow + at.fast
+
+
+@pytest.mark.parametrize("blend", [QUADRATIC, LOOP], ids=["quadratic", "loop"])
+def test_frequency_falls_until_the_droop_is_what_holds_the_output(blend):
+    converter = Converter.parse("O-G/a-O O-G/b-a O-G/I-b")
+    brief = replace(BRIEF, use="regulated", required=10.5)
+    request = resolved(load_brief("pump-shelf").parts, brief)
+    slots, book, problem = posed(converter, brief, request, blend)
+    fillings = fill(slots, problem, search(problem).selection, book)
+    common = {"request": request, "blend": blend}
+    frequencies = []
+    for volts in (44.0, 48.0, 56.0):
+        f = holding_frequency(fillings, 0.25, brief, frequency=120e3, input_voltage=volts, **common)
+        at = condition(fillings, 0.25, brief, frequency=f, input_voltage=volts, **common)
+        assert 0.25 * volts - at.impedance * brief.current == pytest.approx(10.5, rel=1e-9)
+        frequencies.append(f)
+    assert 120e3 > frequencies[0] > frequencies[1] > frequencies[2]
+    for other in (BRIEF, replace(brief, regulation="conductance"), replace(brief, required=10.99)):
+        assert (
+            holding_frequency(fillings, 0.25, other, frequency=120e3, input_voltage=44.0, **common) == 120e3
+        )

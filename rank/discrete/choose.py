@@ -20,7 +20,7 @@ from capmuster.enumerate.errors import CapmusterError
 from capmuster.rank.discrete.blends import QUADRATIC
 from capmuster.rank.discrete.bulk import pool_bounds
 from capmuster.rank.discrete.certify import certify
-from capmuster.rank.discrete.design import condition, exact_impedance, fill
+from capmuster.rank.discrete.design import condition, exact_impedance, fill, holding_frequency
 from capmuster.rank.discrete.finalists import Finalist, PartsShortlist
 from capmuster.rank.discrete.labels import search
 from capmuster.rank.discrete.options import NoPartError, OptionBook, Units
@@ -276,8 +276,19 @@ def _finished(found: _Found, brief: Brief, blend: Blend) -> Finalist:
     fillings = fill(entrant.slots, case.problem, best.selection, book)
     ratio = float(entrant.converter.ratio)
 
-    def at(volts: float) -> Condition:
+    def at(volts: float, frequency: float = book.frequency) -> Condition:
         return condition(
+            fillings,
+            ratio,
+            brief,
+            request=book.request,
+            frequency=frequency,
+            input_voltage=volts,
+            blend=blend,
+        )
+
+    def held(volts: float) -> Condition:
+        frequency = holding_frequency(
             fillings,
             ratio,
             brief,
@@ -286,6 +297,7 @@ def _finished(found: _Found, brief: Brief, blend: Blend) -> Finalist:
             input_voltage=volts,
             blend=blend,
         )
+        return at(volts, frequency)
 
     return Finalist(
         converter=entrant.converter,
@@ -301,7 +313,7 @@ def _finished(found: _Found, brief: Brief, blend: Blend) -> Finalist:
             frequency=book.frequency,
             input_voltage=operating_input(brief),
         ),
-        conditions=(at(brief.input_minimum), at(brief.input_nominal), at(brief.input_maximum)),
+        conditions=(held(brief.input_minimum), held(brief.input_nominal), held(brief.input_maximum)),
         objective=objective,
         bound=min(objective, *(other.reported(outcome.bound) for other, outcome in proofs)),
         relaxed=entrant.bound,

@@ -119,6 +119,8 @@ class Condition:
     ----------
     input_voltage
         Input voltage [V].
+    frequency
+        Switching frequency [Hz].
     slow, fast
         R_SSL and R_FSL [ohm].
     impedance
@@ -132,6 +134,7 @@ class Condition:
     """
 
     input_voltage: float
+    frequency: float
     slow: float
     fast: float
     impedance: float
@@ -201,8 +204,7 @@ def condition(
     request
         Resolved request: temperature, tolerance.
     frequency
-        Switching frequency [Hz]; in regulated use too, so that what regulation by frequency saves on gate
-        drive and output charge above the lowest input is left out.
+        Switching frequency [Hz]; see `holding_frequency` for regulated use.
     input_voltage
         Input voltage [V].
     blend
@@ -239,6 +241,7 @@ def condition(
     )
     return Condition(
         input_voltage=input_voltage,
+        frequency=frequency,
         slow=slow,
         fast=on + series,
         impedance=joined + lead,
@@ -246,6 +249,49 @@ def condition(
         efficiency=reached * brief.current / (ideal * brief.current + losses.load_free),
         losses=losses,
     )
+
+
+def holding_frequency(
+    fillings: Sequence[Filling],
+    ratio: float,
+    brief: Brief,
+    *,
+    request: PartsRequest,
+    frequency: float,
+    input_voltage: float,
+    blend: Blend,
+) -> float:
+    """Find the frequency at which a filled converter holds its output [Hz].
+
+    It is the given one, but for regulation by frequency: there it is as low as the whole droop asks for.
+
+    Parameters
+    ----------
+    fillings, ratio, brief, request, frequency, input_voltage, blend
+        As in `condition`; the frequency is the highest one.
+    """
+    if brief.use != "regulated" or brief.regulation != "frequency":
+        return frequency
+    from scipy.optimize import brentq  # noqa: PLC0415 -- only for finalists
+
+    full = condition(
+        fillings,
+        ratio,
+        brief,
+        request=request,
+        frequency=frequency,
+        input_voltage=input_voltage,
+        blend=blend,
+    )
+    droop = abs(ratio) * input_voltage - abs(brief.required)
+    wanted = droop / brief.current - brief.technology.wiring_resistance
+    if float(blend.value(full.slow, full.fast)) >= wanted:
+        return frequency
+    # R_SSL goes with one over the frequency, and no blend is below it.
+    slower = brentq(
+        lambda times: float(blend.value(times * full.slow, full.fast)) - wanted, 1.0, wanted / full.slow
+    )
+    return frequency / float(slower)
 
 
 def exact_impedance(

@@ -36,7 +36,8 @@ class Finalist:
     exact_impedance
         Its output impedance there without any blend, wiring included [ohm].
     conditions
-        What it does at the least, nominal and highest input.
+        What it does at the least, nominal and highest input; where frequency holds the output, at that
+        frequency.
     objective, bound, relaxed
         What is made least [W, mm2 or EUR], a value that no choice of parts goes below, proven by the integer
         solver, and the continuous bound.
