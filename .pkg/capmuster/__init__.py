@@ -21,9 +21,12 @@ if TYPE_CHECKING:
     from capmuster.rank.brief import Brief, load_brief
     from capmuster.rank.counting import count_census
     from capmuster.rank.detail import detail
+    from capmuster.rank.discrete.choose import choose_parts
     from capmuster.rank.export import export
     from capmuster.rank.listing import list_converters
     from capmuster.rank.lookup import find_converter
+    from capmuster.rank.parts import load_stock
+    from capmuster.rank.parts_request import PartsRequest
     from capmuster.rank.shortlist import Shortlist, shortlist
     from capmuster.rank.technology import Technology, load_technology
     from capmuster.rank.utilisation import charge_flow
@@ -33,16 +36,19 @@ __all__ = [
     "CapmusterError",
     "Cell",
     "Converter",
+    "PartsRequest",
     "Shortlist",
     "Technology",
     "__version__",
     "charge_flow",
+    "choose_parts",
     "count_census",
     "detail",
     "export",
     "find_converter",
     "list_converters",
     "load_brief",
+    "load_stock",
     "load_technology",
     "shortlist",
 ]
@@ -52,15 +58,18 @@ _HOME = {
     "CapmusterError": "capmuster.enumerate.errors",
     "Cell": "capmuster.enumerate.wiring",
     "Converter": "capmuster.enumerate.wiring",
+    "PartsRequest": "capmuster.rank.parts_request",
     "Shortlist": "capmuster.rank.shortlist",
     "Technology": "capmuster.rank.technology",
     "charge_flow": "capmuster.rank.utilisation",
+    "choose_parts": "capmuster.rank.discrete.choose",
     "count_census": "capmuster.rank.counting",
     "detail": "capmuster.rank.detail",
     "export": "capmuster.rank.export",
     "find_converter": "capmuster.rank.lookup",
     "list_converters": "capmuster.rank.listing",
     "load_brief": "capmuster.rank.brief",
+    "load_stock": "capmuster.rank.parts",
     "load_technology": "capmuster.rank.technology",
     "shortlist": "capmuster.rank.shortlist",
 }
