@@ -176,16 +176,21 @@ def _could_be_better(search: _Search, limit: float) -> int:
 
 def _unsized_within_reach(pool: Pool, brief: Brief, limit: float) -> int:
     """Count the topologies without sizes for their usual classes that might have better ones for others."""
+    open_ = [
+        table.converter(row)
+        for table, bounds in zip(pool.unsized, pool.unsized_bounds, strict=True)
+        for row in np.flatnonzero(bounds < limit * (1 - _MARGIN)).tolist()
+    ]
+    if len(open_) > _MOST_SURVIVORS:
+        return len(open_)
     count = 0
-    for table, bounds in zip(pool.unsized, pool.unsized_bounds, strict=True):
-        for row in np.flatnonzero(bounds < limit * (1 - _MARGIN)).tolist():
-            converter = table.converter(row)
-            if droop_within_reach(converter, brief):
-                one = exact_choice(converter, brief, limit)
-                if one is None:
-                    count += not out_of_reach(converter, brief)
-                else:
-                    count += one.least < limit * (1 - _MARGIN)
+    for converter in open_:
+        if droop_within_reach(converter, brief):
+            one = exact_choice(converter, brief, limit)
+            if one is None:
+                count += not out_of_reach(converter, brief)
+            else:
+                count += one.least < limit * (1 - _MARGIN)
     return count
 
 

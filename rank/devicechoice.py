@@ -14,7 +14,7 @@ import numpy as np
 
 from capmuster.rank.classprices import at_prices, differs
 from capmuster.rank.gatedrive import rail_driven
-from capmuster.rank.objectives import Sized, part_of, size_candidates
+from capmuster.rank.objectives import Sized, size_candidates
 from capmuster.rank.sizing import Prices
 from capmuster.rank.structs import placed, rows_of
 
@@ -54,7 +54,7 @@ def choose_and_size(candidates: Candidates) -> tuple[Candidates, Sized]:
         other = at_prices(candidates, _led(candidates, by_area=by_area, by_loss=1.0), allowed)
         rows = np.flatnonzero(differs(candidates, other))
         if len(rows):
-            part = part_of(other, rows)
+            part = other.take(rows)
             found = _improved(part, size_candidates(part), None if allowed is None else allowed[rows])
             best, sized = _better(best, sized, rows, *found)
     if allowed is not None:
@@ -81,13 +81,13 @@ def _improved(best: Candidates, sized: Sized, allowed: NDArray[np.bool_] | None)
     for _ in range(_ROUNDS):
         if not len(open_):
             break
-        now = part_of(best, open_)
+        now = best.take(open_)
         some = None if allowed is None else allowed[open_]
         there = at_prices(now, rows_of(sized.prices, open_), some)
         changed = np.flatnonzero(differs(now, there))
         if not len(changed):
             break
-        open_, there = open_[changed], part_of(there, changed)
+        open_, there = open_[changed], there.take(changed)
         found = size_candidates(there)
         falls = np.flatnonzero(_less(found.merit, sized.merit[open_]))
         best, sized = _better(best, sized, open_, there, found)

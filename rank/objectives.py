@@ -7,20 +7,22 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from capmuster.rank.operation import Candidates, Design, Operation, operation
+from capmuster.rank.operation import Design, Operation, operation
 from capmuster.rank.profile import mean_droop_loss, mean_loss, profile_case
 from capmuster.rank.sizing import Losses, LossModel, Objective, Prices, Sizing, Status, Task, Use, size
-from capmuster.rank.structs import placed, rows_of
+from capmuster.rank.structs import placed
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from capmuster.rank.brief import Brief
+    from capmuster.rank.operation import Modelled
 
     Floats = NDArray[np.float64]
 
 _KEPT = 1e-9  # relative: a limit broken by no more than this is kept
 _MIXES = 40
+_MIX_STEP = 3
 _PASSES = 3  # rounds in which frequencies of a profile and sizes settle
 _USES = {"frequency": Use.FREQUENCY, "conductance": Use.CONDUCTANCE}
 
@@ -85,7 +87,7 @@ class Sized:
         return np.asarray(np.fmin(self.minimum.efficiency, self.maximum.efficiency))
 
 
-def size_candidates(candidates: Candidates) -> Sized:
+def size_candidates(candidates: Modelled) -> Sized:
     """Size candidates for the objective of their brief.
 
     Notes
@@ -108,7 +110,33 @@ def size_candidates(candidates: Candidates) -> Sized:
     return _sized(candidates, found, mix)
 
 
-def relaxed_bound(candidates: Candidates) -> Floats:
+def priced_model(candidates: Modelled, sized: Sized) -> LossModel:
+    """Coefficients that the prices of sized candidates hold for; not for an output held by the frequency."""
+    brief = candidates.brief
+    if brief.objective == "least-area":
+        ends = (candidates.model(brief.input_minimum), candidates.model(brief.input_maximum))
+        return _mean(ends, sized.mix)
+    if brief.profile:
+        return profile_case(candidates, None)[0]
+    return candidates.model(brief.input_nominal)
+
+
+def total_cost(model: LossModel, prices: Prices) -> Floats:
+    """Sum of ``sqrt(n c)`` over all elements at prices, shape (N,)."""
+    slow, series, loss, f = (
+        one[:, None] for one in (prices.slow, prices.series, prices.loss, prices.frequency)
+    )
+    spent = f * model.plate + model.leakage_c
+    capacitors = (slow * model.alpha + series * model.series) * (
+        prices.capacitor_area[:, None] + loss * spent
+    )
+    on = np.where(model.phase == 1, prices.phase_1[:, None], prices.phase_2[:, None]) * model.beta
+    spent = f * (model.gate + model.output_charge) + model.leakage_s
+    switches = on * (prices.switch_area[:, None] + loss * spent)
+    return np.asarray(np.sqrt(capacitors).sum(axis=1) + np.sqrt(switches).sum(axis=1))
+
+
+def relaxed_bound(candidates: Modelled) -> Floats:
     """Bound the merit of relaxed candidates from below, shape (N,); infinity where nothing meets the brief.
 
     Only for objectives that have a bound; for "least-area" it holds the floor at one end at a time.
@@ -132,7 +160,7 @@ def _proven_least(found: Sizing) -> Floats:
     return np.where(found.status == Status.INFEASIBLE, np.inf, least)
 
 
-def _nothing(candidates: Candidates) -> Sized:
+def _nothing(candidates: Modelled) -> Sized:
     """No rows, in the right shapes: the kernel takes one candidate at least."""
     none, wide = np.zeros(0), np.zeros((0, candidates.table.n))
     design = Design(wide, np.zeros((0, 3 * candidates.table.n + 1)), none, none, none)
@@ -153,7 +181,28 @@ def _nothing(candidates: Candidates) -> Sized:
     )
 
 
-def _sized(candidates: Candidates, found: Sizing, mix: Floats) -> Sized:
+def size_at_mix(candidates: Modelled, mix: Floats) -> Sized:
+    """Size candidates for "least-area" with the limit on loss at given weights of the least input.
+
+    The sizes need not keep the floor at either end; their prices and lower bounds hold all the same. For
+    other objectives the weights mean nothing.
+    """
+    brief = candidates.brief
+    if brief.objective != "least-area":
+        return size_candidates(candidates)
+    ends = (candidates.model(brief.input_minimum), candidates.model(brief.input_maximum))
+    volts = mix * brief.input_minimum + (1.0 - mix) * brief.input_maximum
+    return _sized(candidates, size(_mean(ends, mix), _task(candidates, Objective.AREA, volts)), mix)
+
+
+def better_mix(sized: Sized, turn: int) -> Floats:
+    """Shift the weight of the least input towards the end that loses more than the floor allows."""
+    step = 1.0 / (turn + _MIX_STEP)
+    shifted = sized.mix + np.where(sized.minimum.efficiency < sized.maximum.efficiency, step, -step)
+    return np.clip(np.where(np.isfinite(shifted), shifted, sized.mix), 0.0, 1.0)
+
+
+def _sized(candidates: Modelled, found: Sizing, mix: Floats) -> Sized:
     brief, idle = candidates.brief, candidates.elements.idle_area
     design = _design(found, brief)
     at = [
@@ -207,7 +256,7 @@ def _design(found: Sizing, brief: Brief) -> Design:
     return Design(found.capacitors, found.switches, found.frequency, found.duty, full)
 
 
-def _task(candidates: Candidates, objective: Objective, volts: float | Floats) -> Task:
+def _task(candidates: Modelled, objective: Objective, volts: float | Floats) -> Task:
     """Limits that all objectives share, with losses counted at an input voltage [V]."""
     brief = candidates.brief
     idle = candidates.elements.idle_area
@@ -234,7 +283,7 @@ def _budget(budget: float | None, idle: Floats) -> Floats:
     return np.maximum((np.inf if budget is None else budget) - idle, 0.0)
 
 
-def _least_loss(candidates: Candidates) -> Sizing:
+def _least_loss(candidates: Modelled) -> Sizing:
     brief = candidates.brief
     task = _task(candidates, Objective.LOSS, brief.input_nominal)
     if not brief.profile:
@@ -248,7 +297,7 @@ def _least_loss(candidates: Candidates) -> Sizing:
     return found
 
 
-def _power_density(candidates: Candidates) -> Sizing:
+def _power_density(candidates: Modelled) -> Sizing:
     brief = candidates.brief
     droop = np.abs(candidates.table.ratios) * brief.input_minimum - abs(brief.required)
     least = brief.current if brief.current_least is None else brief.current_least
@@ -262,7 +311,7 @@ def _power_density(candidates: Candidates) -> Sizing:
     return size(candidates.model(brief.input_nominal), task)
 
 
-def _least_area(candidates: Candidates) -> tuple[Sizing, Floats]:
+def _least_area(candidates: Modelled) -> tuple[Sizing, Floats]:
     """Sizes, and the weight of the least input in the limit that they are the best for."""
     brief = candidates.brief
     low, high = brief.input_minimum, brief.input_maximum
@@ -276,7 +325,7 @@ def _least_area(candidates: Candidates) -> tuple[Sizing, Floats]:
     open_ = np.flatnonzero(np.isfinite(found.value) & ~(excess_low <= _KEPT))
     if not len(open_):
         return found, mix
-    part = part_of(candidates, open_)
+    part = candidates.take(open_)
     there = (models[0].take(open_), models[1].take(open_))
     second = size(there[0], _task(part, Objective.AREA, low))
     at_low, at_high = _excess(part, second, there)
@@ -287,7 +336,7 @@ def _least_area(candidates: Candidates) -> tuple[Sizing, Floats]:
         return found, mix
     rows = open_[both]
     mixed, weight = _mixed(
-        part_of(candidates, rows),
+        candidates.take(rows),
         (there[0].take(both), there[1].take(both)),
         excess_low[rows] - excess_high[rows],
         at_low[both] - at_high[both],
@@ -296,19 +345,8 @@ def _least_area(candidates: Candidates) -> tuple[Sizing, Floats]:
     return placed(found, rows, mixed), mix
 
 
-def part_of(candidates: Candidates, rows: NDArray[np.intp]) -> Candidates:
-    """Return the chosen candidates."""
-    return Candidates(
-        candidates.table.take(rows),
-        candidates.switches.take(rows),
-        rows_of(candidates.elements, rows),
-        candidates.brief,
-        candidates.relaxed,
-    )
-
-
 def _excess(
-    candidates: Candidates, found: Sizing, models: tuple[LossModel, LossModel]
+    candidates: Modelled, found: Sizing, models: tuple[LossModel, LossModel]
 ) -> tuple[Floats, Floats]:
     """Loss beyond what the floor allows at the least and at the highest input, per ideal output power."""
     brief = candidates.brief
@@ -324,7 +362,7 @@ def _excess(
 
 
 def _mixed(
-    candidates: Candidates, models: tuple[LossModel, LossModel], first: Floats, last: Floats
+    candidates: Modelled, models: tuple[LossModel, LossModel], first: Floats, last: Floats
 ) -> tuple[Sizing, Floats]:
     """Size where both ends bind, and return the weight of the least input, found by the Illinois rule.
 
@@ -337,7 +375,9 @@ def _mixed(
     at_low, at_high = first.copy(), last.copy()
     best: Sizing | None = None
     for _ in range(_MIXES):
-        weight = np.clip((low * at_high - high * at_low) / (at_high - at_low), low, high)
+        with np.errstate(divide="ignore", invalid="ignore"):
+            weight = np.clip((low * at_high - high * at_low) / (at_high - at_low), low, high)
+        weight = np.where(np.isfinite(weight), weight, 0.5 * (low + high))
         volts = weight * brief.input_minimum + (1.0 - weight) * brief.input_maximum
         found = size(_mean(models, weight), _task(candidates, Objective.AREA, volts))
         more, less = _excess(candidates, found, models)

@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Protocol
 
 import numpy as np
 
 from capmuster.rank.losses import best_of_all, loss_model
 from capmuster.rank.sizing import Losses, LossModel, impedance, losses
+from capmuster.rank.structs import rows_of
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -19,6 +20,35 @@ if TYPE_CHECKING:
     from capmuster.rank.switchtable import SwitchTable
 
     Floats = NDArray[np.float64]
+
+
+class Modelled(Protocol):
+    """N converters with coefficients: all that a sizing needs."""
+
+    @property
+    def table(self) -> ConverterTable:
+        """The converters."""
+
+    @property
+    def switches(self) -> SwitchTable:
+        """Their switches."""
+
+    @property
+    def elements(self) -> Elements:
+        """Classes of their elements."""
+
+    @property
+    def brief(self) -> Brief:
+        """The job."""
+
+    def model(self, volts: float) -> LossModel:
+        """Coefficients at an input voltage [V]."""
+
+    def ideal(self, volts: float) -> Floats:
+        """Output without droop, its magnitude, shape (N,) [V]."""
+
+    def take(self, rows: NDArray[np.intp]) -> Modelled:
+        """Return the chosen rows."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -49,6 +79,16 @@ class Candidates:
     def ideal(self, volts: float) -> Floats:
         """Output without droop, its magnitude, shape (N,) [V]."""
         return np.abs(self.table.ratios) * volts
+
+    def take(self, rows: NDArray[np.intp]) -> Candidates:
+        """Return the chosen rows."""
+        return Candidates(
+            self.table.take(rows),
+            self.switches.take(rows),
+            rows_of(self.elements, rows),
+            self.brief,
+            self.relaxed,
+        )
 
 
 @dataclass(frozen=True, slots=True)
@@ -105,7 +145,7 @@ class Operation:
 
 
 def operation(
-    candidates: Candidates, design: Design, volts: float, current: Floats, model: LossModel | None = None
+    candidates: Modelled, design: Design, volts: float, current: Floats, model: LossModel | None = None
 ) -> Operation:
     """Work out what sized candidates do.
 

@@ -15,7 +15,7 @@ if TYPE_CHECKING:
 
     from capmuster.rank.brief import Brief
     from capmuster.rank.objectives import Sized
-    from capmuster.rank.operation import Candidates, Design
+    from capmuster.rank.operation import Design, Modelled
     from capmuster.rank.sizing import LossModel
 
     Floats = NDArray[np.float64]
@@ -30,7 +30,7 @@ class Changes(TypedDict, total=False):
     held_share: Floats
 
 
-def profile_case(candidates: Candidates, design: Design | None) -> tuple[LossModel, Changes]:
+def profile_case(candidates: Modelled, design: Design | None) -> tuple[LossModel, Changes]:
     """Coefficients whose losses are the means over the profile, and the currents and points of the task.
 
     Parameters
@@ -89,7 +89,7 @@ def _weighted(mean: LossModel, models: list[LossModel], weights: Floats) -> Loss
     return replace(mean, cycle=cycle, **parts)
 
 
-def mean_loss(candidates: Candidates, design: Design) -> tuple[Floats, Floats]:
+def mean_loss(candidates: Modelled, design: Design) -> tuple[Floats, Floats]:
     """Mean loss and mean output power [W] over the profile, or at the nominal input and full load."""
     brief = candidates.brief
     if not brief.profile:
@@ -142,7 +142,7 @@ def loss_points(brief: Brief, sized: Sized) -> tuple[LossPoint, ...]:
     )
 
 
-def mean_droop_loss(candidates: Candidates) -> Floats:
+def mean_droop_loss(candidates: Modelled) -> Floats:
     """Mean of what a held output loses by its droop, over the profile or at the nominal input; (N,) [W]."""
     brief = candidates.brief
     points = [(point.share, point.current, _volts(brief, point.volts)) for point in brief.profile]

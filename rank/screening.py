@@ -14,6 +14,8 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from capmuster.rank.blend import Blend
+from capmuster.rank.classprices import at_prices
 from capmuster.rank.losses import (
     capacitor_coefficients,
     every_class,
@@ -21,9 +23,9 @@ from capmuster.rank.losses import (
     series_counts,
     switch_coefficients,
 )
-from capmuster.rank.objectives import part_of, relaxed_bound
+from capmuster.rank.objectives import better_mix, priced_model, relaxed_bound, size_at_mix, total_cost
 from capmuster.rank.profile import loss_points
-from capmuster.rank.structs import rows_of
+from capmuster.rank.structs import placed, rows_of
 from capmuster.rank.switching import switch_network
 from capmuster.rank.trees import trees_of
 
@@ -35,10 +37,9 @@ if TYPE_CHECKING:
     from capmuster.enumerate.wiring import Converter
     from capmuster.rank.brief import Brief
     from capmuster.rank.objectives import Sized
-    from capmuster.rank.operation import Candidates
+    from capmuster.rank.operation import Candidates, Modelled
     from capmuster.rank.profile import LossPoint
     from capmuster.rank.sizing import Prices
-    from capmuster.rank.technology import Choice
 
     Floats = NDArray[np.float64]
 
@@ -46,6 +47,8 @@ _O = 2
 _STEP = 0.05  # of log f
 _ROUNDING = 1e-9
 _ANGLES = 181
+_BLENDS = 6
+_LIGHTER = 3
 
 
 def can_be_exact(brief: Brief) -> bool:
@@ -72,11 +75,25 @@ def merit_bound(candidates: Candidates, sized: Sized) -> Floats:
     bound = np.full(len(candidates.table), -np.inf)
     have = np.flatnonzero(np.isfinite(sized.merit) & np.isfinite(sized.least))
     if len(have):
-        bound[have] = _by_prices(part_of(candidates, have), rows_of(sized, have))
+        blends = _BLENDS if candidates.brief.objective == "least-area" else 0
+        part = candidates.take(have)
+        bound[have] = _by_better_prices(part, part, rows_of(sized, have), blends)
     rest = np.flatnonzero(~np.isfinite(sized.merit))
     if len(rest):
-        bound[rest] = relaxed_bound(replace(part_of(candidates, rest), relaxed=True))
+        part = candidates.take(rest)
+        bound[rest] = _unsized_bound(part, replace(part, relaxed=True))
     return np.asarray(np.fmin(bound, np.where(np.isfinite(sized.merit), sized.merit, np.inf)))
+
+
+def _unsized_bound(candidates: Candidates, relaxed: Candidates) -> Floats:
+    """Bound the merit of candidates without sizes, from elements that have the best of every class."""
+    bound = relaxed_bound(relaxed)
+    sized = size_at_mix(relaxed, np.full(len(bound), 0.5))
+    good = np.flatnonzero(np.isfinite(sized.merit) & np.isfinite(sized.least))
+    if len(good):
+        found = _by_better_prices(candidates.take(good), relaxed.take(good), rows_of(sized, good), _BLENDS)
+        bound[good] = np.maximum(bound[good], found)
+    return bound
 
 
 def droop_within_reach(converter: Converter, brief: Brief) -> bool:
@@ -126,19 +143,52 @@ class _Coefficients:
     still: Floats
 
 
-def _by_prices(candidates: Candidates, sized: Sized) -> Floats:
+def _by_better_prices(candidates: Candidates, source: Modelled, sized: Sized, blends: int) -> Floats:
+    """Bound by the prices of sized sources, and of blends with the classes that these let through."""
+    bound = _by_prices(candidates, source, sized)
+    open_ = np.arange(len(bound))
+    for turn in range(blends):
+        relaxed = at_prices(candidates.take(open_), sized.prices)
+        source, sized, good = _blended(source, relaxed, 1.0 / (turn + 2), better_mix(sized, turn))
+        open_ = open_[good]
+        if not len(open_):
+            break
+        bound[open_] = np.maximum(bound[open_], _by_prices(candidates.take(open_), source, sized))
+    return bound
+
+
+def _blended(
+    source: Modelled, relaxed: Candidates, weight: float, mix: Floats
+) -> tuple[Modelled, Sized, NDArray[np.intp]]:
+    """Blend sources of prices with relaxed choices, of which there is less where the blend has no sizes.
+
+    Returns the blends that have sizes, their sizes, and their rows.
+    """
+    weights = np.full(len(relaxed.table), weight)
+    sized = size_at_mix(Blend(source, relaxed, weights), mix)
+    for _ in range(_LIGHTER):
+        bad = np.flatnonzero(~(np.isfinite(sized.merit) & np.isfinite(sized.least)))
+        if not len(bad):
+            break
+        weights[bad] /= 3
+        again = size_at_mix(Blend(source.take(bad), relaxed.take(bad), weights[bad]), mix[bad])
+        sized = placed(sized, bad, again)
+    good = np.flatnonzero(np.isfinite(sized.merit) & np.isfinite(sized.least))
+    return Blend(source, relaxed, weights).take(good), rows_of(sized, good), good
+
+
+def _by_prices(candidates: Candidates, source: Modelled, sized: Sized) -> Floats:
+    """Bound by the prices of sized sources, which may be blends of the same converters."""
     brief, prices = candidates.brief, sized.prices
     points = loss_points(brief, sized)
     capacitors = _capacitors(candidates, points)
-    chains = _chain(candidates, points)
-    own = _own(candidates, capacitors, chains, prices)
-    rest = sized.least - 2 * own
+    rest = sized.least - 2 * total_cost(priced_model(source, sized), prices)
     low = brief.frequency if brief.frequency_minimum is None else brief.frequency_minimum
     span = np.log(brief.frequency / low)
     count = max(1, int(np.ceil(span / _STEP)))
     step = span / count
     least = np.full(len(rest), np.inf)
-    trees = chains if brief.use == "regulated" else _per_volt(candidates, points)
+    trees = (_chain if brief.use == "regulated" else _per_volt)(candidates, points)
     for k in range(count):
         f = np.full(len(rest), np.exp(np.log(low) + step * (k + 0.5)))
         total = _capacitor_cost(capacitors, prices, f).min(axis=-1).sum(axis=1)
@@ -221,20 +271,6 @@ def _switch_cost(candidates: Candidates, coefficients: _Coefficients, prices: Pr
     output = np.abs(table.port_charges[:, _O, None]).astype(np.float64)
     moved = switches.charges / output * switches.blocking / table.scale[:, None]
     return np.asarray((on * moved).sum(axis=1) * best.min(axis=1))
-
-
-def _own(candidates: Candidates, capacitors: _Coefficients, chains: _Coefficients, prices: Prices) -> Floats:
-    """Cost of the elements as they were chosen, shape (N,)."""
-    elements, switches = candidates.elements, candidates.switches
-    f = prices.frequency
-    on = np.sqrt(np.where(switches.phase == 1, prices.phase_1[:, None], prices.phase_2[:, None]))
-    total = _chosen(_capacitor_cost(capacitors, prices, f), elements.capacitor_choice).sum(axis=1)
-    each = _chosen(_each_switch(chains, prices, f), elements.switch_choice)
-    return np.asarray(total + (on * each).sum(axis=1))
-
-
-def _chosen(costs: Floats, choice: Choice) -> Floats:
-    return np.asarray(np.take_along_axis(costs, choice.index[..., None], axis=-1)[..., 0])
 
 
 def _wide(values: Floats) -> Floats:

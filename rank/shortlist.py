@@ -13,11 +13,11 @@ from capmuster.enumerate.families import family_names
 from capmuster.rank._version import __version__
 from capmuster.rank.cautions import cautions
 from capmuster.rank.certify import certify
+from capmuster.rank.choices import start_of
 from capmuster.rank.columns import COLUMNS, Column, columns_of
 from capmuster.rank.devicechoice import choose_and_size
 from capmuster.rank.elements import Element, elements_of
 from capmuster.rank.evaluation import ceiling, efficiency
-from capmuster.rank.exactchoice import start_of
 from capmuster.rank.finalist import finalists
 from capmuster.rank.finaltable import EXACT_COLUMNS, finalist_frame
 from capmuster.rank.lossvalues import capacitor_values, loss_values, spread_values

@@ -13,9 +13,10 @@ import pytest
 from capmuster.enumerate.converters import converters
 from capmuster.enumerate.wiring import Converter
 from capmuster.rank.brief import load_brief
+from capmuster.rank.choices import Choice, build, start_of
 from capmuster.rank.circuit import circuit_of
 from capmuster.rank.conditions import LoadPoint
-from capmuster.rank.exactchoice import Choice, build, exact_choice, start_of
+from capmuster.rank.exactchoice import exact_choice
 from capmuster.rank.impedance import output_impedance
 from capmuster.rank.objectives import size_candidates
 from capmuster.rank.optioncosts import option_set
