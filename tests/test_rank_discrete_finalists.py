@@ -209,10 +209,12 @@ def test_an_included_wiring_is_ranked_clean_or_not():
 
 
 def test_without_parts_or_room_nothing_is_found_and_the_reason_is_counted():
-    none = choose_parts(QUARTERS, replace(SHELF.parts, footprint=5.0))
-    assert len(none) == 0
-    assert none.left_out == {"no choice of parts keeps the limits": none.candidates}
-    assert none.certificate == "No candidate can be built from the stock within the limits."
+    targeted = {"least": "price", "footprint": None, "efficiency": 0.999}
+    for changes in ({"footprint": 5.0}, targeted, {**targeted, "efficiency": 0.98, "footprint": 200.0}):
+        none = choose_parts(QUARTERS, replace(SHELF.parts, **changes))
+        assert len(none) == 0
+        assert none.left_out == {"no choice of parts keeps the limits": none.candidates}
+        assert none.certificate == "No candidate can be built from the stock within the limits."
     low = Stock(SHELF.parts.stock.names, SHELF.parts.stock.capacitors[:1], SHELF.parts.stock.switches)
     lacking = choose_parts(QUARTERS, replace(SHELF.parts, stock=low))
     assert lacking.left_out == {"no part of the stock stands a voltage": lacking.candidates}

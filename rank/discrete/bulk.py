@@ -7,14 +7,16 @@ found once, and the bound of a converter is a sum of them (see `capmuster.rank.d
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from fractions import Fraction
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Final
 
 import numpy as np
 
 from capmuster.rank.discrete.options import lowered
-from capmuster.rank.discrete.problem import frame_of, operating_input, phase_factors, reported
+from capmuster.rank.discrete.problem import SLACK, frame_of, operating_input, phase_factors, reported
+from capmuster.rank.discrete.relaxed import tangents
 from capmuster.rank.switchtable import switch_table
 from capmuster.rank.worstcase import ratings
 
@@ -34,7 +36,8 @@ if TYPE_CHECKING:
     Floats = NDArray[np.float64]
     Integers = NDArray[np.intp]
 
-_BLOCK = 4096
+_BLOCK: Final = 4096
+_ANGLES: Final = np.linspace(0.0, np.pi / 2, 9)[1:-1]
 
 
 @dataclass(frozen=True, slots=True)
@@ -154,20 +157,39 @@ def _bounds(
     prices: Sequence[Multipliers],
 ) -> Floats:
     """Best bound of each row over all multipliers, shape (N,)."""
-    weights = np.array([[m.slow, m.fast, m.fixed, m.footprint, m.price] for m in prices]).reshape(-1, 5)
-    weights = np.vstack([weights, [0, 0, 0, 1, 0], [0, 0, 0, 0, 1]])  # least footprint and price as well
-    costs = sum((_costs(one, book, weights) for one in elements), start=np.zeros((len(table), len(weights))))
     bounds = np.full(len(table), np.inf)
+    if not frames:
+        return bounds
+    priced = np.array([[m.slow, m.fast, m.fixed, m.footprint, m.price] for m in prices]).reshape(-1, 5)
+    weights = np.vstack([priced, *(weighed for weighed, _ in _least_sums(frames[0][0]))])
+    nothing = np.zeros((len(table), len(weights)))
+    costs = sum((_costs(one, book, weights) for one in elements), start=nothing)
     for frame, rows in frames:
         if frame.impedance_limit <= 0 or frame.limit < 0:
             continue
         limits = np.array([one.limits(frame) for one in prices])
-        best = (costs[rows, :-2] - limits).max(axis=1, initial=-np.inf)
-        for used, budget in ((costs[rows, -2], frame.footprint), (costs[rows, -1], frame.price)):
-            if budget is not None:
-                best = np.where(used > budget, np.inf, best)
+        best = (costs[rows, : len(prices)] - limits).max(axis=1, initial=-np.inf)
+        for used, (_, most) in zip(costs[rows, len(prices) :].T, _least_sums(frame), strict=True):
+            best = np.where(used > most, np.inf, best)
         bounds[rows] = reported(frame, book.units, best)
     return bounds
+
+
+def _least_sums(frame: Problem) -> list[tuple[Floats, float]]:
+    """Weights of R_SSL, R_FSL, fixed loss, footprint and price, and the most that a choice may sum up to.
+
+    An element that takes the least of one sum alone shows which limits are out of reach altogether.
+    """
+    none = math.inf
+    found = [
+        (np.array([0.0, 0, 0, 1, 0]), none if frame.footprint is None else frame.footprint),
+        (np.array([0.0, 0, 0, 0, 1]), none if frame.price is None else frame.price),
+    ]
+    square = frame.square_current if frame.conducts else 0.0
+    for a, b in zip(*tangents(frame, _ANGLES), strict=True):
+        found.append((np.array([a, b, 0, 0, 0]), frame.impedance_limit * (1 + SLACK)))
+        found.append((np.array([square * a, square * b, frame.share, 0, 0]), frame.limit * (1 + SLACK)))
+    return found
 
 
 def _frames(

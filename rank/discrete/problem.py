@@ -190,9 +190,10 @@ def resolved(request: PartsRequest, brief: Brief) -> PartsRequest:
         )
     frequencies = request.frequencies
     if not frequencies:
-        lowest = brief.frequency_minimum or brief.frequency
-        grid = np.geomspace(lowest, brief.frequency, _GRID) if lowest < brief.frequency else [brief.frequency]
-        frequencies = tuple(float(f"{one:.3g}") for one in grid) if len(grid) > 1 else (brief.frequency,)
+        lowest, highest = brief.frequency_minimum or brief.frequency, brief.frequency
+        between = np.geomspace(lowest, highest, _GRID)[1:-1].tolist() if lowest < highest else []
+        rounded = (float(f"{one:.3g}") for one in between)
+        frequencies = tuple(sorted({lowest, *rounded, highest}))
     technology = brief.technology
     footprint = request.footprint
     areas = [one for one in (brief.area, brief.silicon_area, brief.capacitor_area) if one is not None]

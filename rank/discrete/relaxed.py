@@ -27,7 +27,7 @@ if TYPE_CHECKING:
     Floats = NDArray[np.float64]
 
 _ANGLES: Final = np.linspace(0.0, np.pi / 2, 9)[1:-1]
-_SOLVED: Final = 0  # status of scipy.optimize.linprog
+_SOLVED, _INFEASIBLE = 0, 2  # status of scipy.optimize.linprog
 
 
 @dataclass(frozen=True, slots=True)
@@ -120,7 +120,7 @@ def relax(problem: Problem) -> Relaxed:
     The blend is replaced by its tangents, first along fixed directions and then close to where they lead.
     """
     first = _solved(problem, _ANGLES)
-    if first.multipliers is None:
+    if math.isnan(first.slow):
         return first
     close = math.atan2(first.fast, first.slow) + np.linspace(-0.05, 0.05, 9)
     second = _solved(problem, np.clip(close, 1e-3, np.pi / 2 - 1e-3))
@@ -178,8 +178,20 @@ def _solved(problem: Problem, angles: Floats) -> Relaxed:
         bounds=[(0, None)] * sum(sizes) + [(min(0.0, highest), highest)],
         method="highs",
     )
-    if result.status != _SOLVED:
+    if result.status == _INFEASIBLE:
         return Relaxed(math.inf, None, math.nan, math.nan)
+    if result.status != _SOLVED:
+        # The solver gave up: without prices on any limit a bound is poor, and holds.
+        poor = Multipliers(
+            slow=0.0,
+            fast=0.0,
+            fixed=float(least_loss),
+            footprint=float(problem.least == "footprint"),
+            price=float(problem.least == "price"),
+            impedance=0.0,
+            target=0.0,
+        )
+        return Relaxed(poor.bound(problem), poor, math.nan, math.nan)
     prices = unit * np.maximum(-np.asarray(result.ineqlin.marginals, dtype=np.float64), 0.0)
     on_tangents, on_budgets = prices[: len(angles)], prices[len(angles) :]
     on_loss = 1.0 if least_loss else float(prices[-1]) if limited else 0.0
