@@ -85,6 +85,21 @@ def test_a_search_without_room_says_so_and_its_bound_holds(case, least):
         assert short.objective >= full.objective * (1 - 1e-9)
 
 
+@pytest.mark.parametrize("loss", [1.65, 1.75, 2.2])
+def test_the_solver_goes_on_while_its_choice_breaks_a_limit(loss):
+    # Between the tangents that it starts with the blend is above all of them: here the first choice breaks the
+    # loss target, or at 2.2 W the limit on the impedance, and nothing is proven before more tangents are there.
+    parts = replace(load_brief("pump-shelf").parts, least="price", footprint=None, loss=loss)
+    *_, problem = posed(Converter.parse("O-G/a-O O-G/b-a O-G/I-b"), BRIEF, resolved(parts, BRIEF))
+    by_labels, by_solver = search(problem), certify(problem, NOTHING)
+    assert by_labels.proven
+    assert by_solver.proven
+    assert by_solver.objective == by_solver.bound == by_labels.objective
+    first = certify(problem, NOTHING, rounds=1)
+    assert (first.selection, first.proven) == (None, False)
+    assert first.bound < by_labels.objective
+
+
 def test_the_solver_gives_the_same_result_each_time():
     request = resolved(replace(load_brief("pump-shelf").parts, footprint=450.0), BRIEF)
     *_, problem = posed(Converter.parse("O-G/a-O O-G/b-a O-G/I-b"), BRIEF, request)

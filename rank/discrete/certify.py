@@ -23,7 +23,6 @@ if TYPE_CHECKING:
 
     from capmuster.rank.discrete.problem import Problem, Selection, Totals
 
-_ROUNDS: Final = 60
 _STEPS: Final = 2**32  # whole steps that the largest total is divided into
 _LEAST: Final = 1e-9  # a loss that nobody counts [W]
 _ANGLES: Final = np.linspace(0.0, np.pi / 2, 9)[1:-1]
@@ -73,7 +72,9 @@ class _Model:
         return sum(total, start=0)
 
 
-def certify(problem: Problem, known: Outcome, *, seed: int = 1, effort: float = 60.0) -> Outcome:
+def certify(
+    problem: Problem, known: Outcome, *, seed: int = 1, effort: float = 60.0, rounds: int = 60
+) -> Outcome:
     """Search a problem with CP-SAT, without what another search knows but for a first choice.
 
     Parameters
@@ -86,6 +87,8 @@ def certify(problem: Problem, known: Outcome, *, seed: int = 1, effort: float = 
         Seed of the solver, which runs with one worker: the same problem gives the same result.
     effort
         Most work of each round, in the solver's deterministic seconds.
+    rounds
+        Most rounds; each adds a tangent.
 
     Returns
     -------
@@ -102,7 +105,7 @@ def certify(problem: Problem, known: Outcome, *, seed: int = 1, effort: float = 
     solver.parameters.random_seed = seed
     solver.parameters.max_deterministic_time = effort
     best, bound = _judged(problem, known.selection), -math.inf
-    for _ in range(_ROUNDS):
+    for _ in range(rounds):
         status = solver.solve(model.model)
         if status == cp_model.INFEASIBLE:
             return Outcome(best[0], best[1], best[2], best[2], proven=True)
@@ -115,7 +118,7 @@ def certify(problem: Problem, known: Outcome, *, seed: int = 1, effort: float = 
         )
         found = _judged(problem, selection)
         best = min(best, found, key=lambda one: one[2])
-        if best[2] - bound <= _PROVEN * abs(best[2]) or status == cp_model.FEASIBLE:
+        if _closed(best[2], bound) or status == cp_model.FEASIBLE:
             break
         totals = problem.totals(selection)
         angle = math.atan2(totals.fast, totals.slow)
@@ -125,9 +128,13 @@ def certify(problem: Problem, known: Outcome, *, seed: int = 1, effort: float = 
     if known.selection is None and best[0] is not None and problem.least == "loss":
         # Steps were as coarse as the dearest choice; ask again with steps that fit.
         first = Outcome(*best, bound, proven=False)
-        return certify(problem, first, seed=seed, effort=effort)
-    gap = best[2] - bound
-    return Outcome(best[0], best[1], best[2], min(bound, best[2]), proven=gap <= _PROVEN * abs(best[2]))
+        return certify(problem, first, seed=seed, effort=effort, rounds=rounds)
+    return Outcome(best[0], best[1], best[2], min(bound, best[2]), proven=_closed(best[2], bound))
+
+
+def _closed(value: float, bound: float) -> bool:
+    """Whether a choice of this value is proven best by a bound; without a choice nothing is."""
+    return value < math.inf and value - bound <= _PROVEN * abs(value)
 
 
 def _model(problem: Problem, known: Outcome) -> _Model:
