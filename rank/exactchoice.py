@@ -32,6 +32,7 @@ from capmuster.rank.objectives import Sized, priced_model, size_candidates, tota
 from capmuster.rank.optioncosts import option_costs, option_set
 from capmuster.rank.profile import loss_points
 from capmuster.rank.structs import rows_of
+from capmuster.rank.trees import trees_of
 
 if TYPE_CHECKING:
     from collections.abc import Iterator
@@ -149,6 +150,8 @@ def _between(source: Modelled, relaxed: Candidates, turn: int) -> tuple[Modelled
 def _found(
     network: SwitchNetwork, candidate: Candidates, sized: Sized, least: float, *, proven: bool
 ) -> ExactChoice:
+    if candidate.brief.use == "fixed-ratio" and not all(vertex.whole for vertex in trees_of(network)):
+        least, proven = -np.inf, False  # a vertex has more trees than are listed
     return ExactChoice(with_switches(network, candidate), candidate, sized, least, proven=proven)
 
 

@@ -116,7 +116,10 @@ def droop_within_reach(converter: Converter, brief: Brief) -> bool:
     series = stack * classes.series_resistance / (duty * (1 - duty))
     capacitors = np.sqrt(np.cos(angle) * slow + np.sin(angle) * series).min(axis=-1).sum(axis=-1)
     switches = 0.0
-    for vertex in trees_of(network):
+    vertices = trees_of(network)
+    if not all(vertex.whole for vertex in vertices):
+        return True
+    for vertex in vertices:
         share = 1.0 if brief.duty is None else (duty if vertex.phase == 1 else 1 - duty)
         cost = np.sqrt(technology.switch_choice(vertex.blocking * volts).cost / share)
         switches += float((np.nan_to_num(vertex.charges) @ cost).min())

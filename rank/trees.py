@@ -9,7 +9,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 from functools import lru_cache
 from itertools import combinations, product
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, TypeAlias
 
 import numpy as np
 
@@ -20,8 +20,8 @@ if TYPE_CHECKING:
 
     Floats = NDArray[np.float64]
 
-MOST_CLUSTERS = 7
-"""Clusters of a vertex up to which all trees are listed: 16807 of them."""
+MOST_CLUSTERS = 6
+"""Clusters of a vertex up to which all trees are listed: 1296 of them."""
 
 _PAIR = 2
 
@@ -44,6 +44,8 @@ class VertexTrees:
         Shape (trees, p): charge through the switch per output charge; NaN where the tree has none there.
     chain
         Which of the trees is the chain.
+    whole
+        Whether these are all trees.
     """
 
     phase: int
@@ -52,6 +54,7 @@ class VertexTrees:
     blocking: Floats
     charges: Floats
     chain: int
+    whole: bool
 
 
 def trees_of(network: SwitchNetwork, *, chains: bool = False) -> tuple[VertexTrees, ...]:
@@ -91,13 +94,12 @@ def _vertex(
     # The chain's own pairs first, in its order: the tree that is the chain lists its switches as it does.
     pairs = list(dict.fromkeys([*chain, *combinations(range(len(clusters)), 2)]))
     column = {pair: j for j, pair in enumerate(pairs)}
-    listed = (chain,) if alone else _trees(len(clusters))
-    charges = np.full((len(listed), len(pairs)), np.nan)
-    for t, edges in enumerate(listed):
-        for edge in edges:
-            side = _side(edges, edge, len(clusters))
-            moved = abs(float(brought[side].sum()))
-            charges[t, column[edge[0], edge[1]]] = 0.0 if moved < _NOTHING else moved
+    trees = _trees(len(clusters))[0] if not alone else (chain,)
+    sides = _trees(len(clusters))[1] if not alone else _sides((chain,), len(clusters))
+    moved = np.abs(sides @ brought)
+    charges = np.full((len(trees), len(pairs)), np.nan)
+    columns = np.array([[column[edge[0], edge[1]] for edge in edges] for edges in trees])
+    charges[np.arange(len(trees))[:, None], columns] = np.where(moved < _NOTHING, 0.0, moved)
     ordered = [
         (clusters[i], clusters[j]) if there[clusters[i]] >= there[clusters[j]] else (clusters[j], clusters[i])
         for i, j in pairs
@@ -109,31 +111,41 @@ def _vertex(
         blocking=np.array([float(there[high] - there[low]) for high, low in ordered]),
         charges=charges,
         chain=int(np.argmax(np.isfinite(charges[:, : len(chain)]).all(axis=1))),
+        whole=not alone,
     )
 
 
 _NOTHING = 1e-12  # charge multipliers are quotients of small integers
 
 
-def _side(edges: tuple[tuple[int, ...], ...], cut: tuple[int, ...], count: int) -> list[int]:
-    """Clusters on the side of the cut edge's first end."""
-    side = {cut[0]}
-    for _ in range(count):
-        for edge in edges:
-            if edge != cut and (edge[0] in side) != (edge[1] in side):
-                side.update(edge)
-    return sorted(side)
+_Edges: TypeAlias = "tuple[tuple[int, ...], ...]"
+
+
+def _sides(trees: tuple[_Edges, ...], count: int) -> NDArray[np.bool_]:
+    """Mark the clusters on the side of each edge's first end, shape (trees, edges, clusters)."""
+    found = np.zeros((len(trees), count - 1, count), dtype=bool)
+    for t, edges in enumerate(trees):
+        for e, cut in enumerate(edges):
+            side = {cut[0]}
+            for _ in range(count):
+                for edge in edges:
+                    if edge != cut and (edge[0] in side) != (edge[1] in side):
+                        side.update(edge)
+            found[t, e, list(side)] = True
+    return found
 
 
 @lru_cache(maxsize=8)
-def _trees(count: int) -> tuple[tuple[tuple[int, ...], ...], ...]:
-    """All labelled trees of ``count`` vertices, each a tuple of edges (lesser end first)."""
+def _trees(count: int) -> tuple[tuple[_Edges, ...], NDArray[np.bool_]]:
+    """List all labelled trees of ``count`` vertices by their edges (lesser end first), and their sides."""
     if count == _PAIR:
-        return (((0, 1),),)
-    return tuple(_decoded(sequence, count) for sequence in product(range(count), repeat=count - 2))
+        listed: tuple[_Edges, ...] = (((0, 1),),)
+    else:
+        listed = tuple(_decoded(sequence, count) for sequence in product(range(count), repeat=count - 2))
+    return listed, _sides(listed, count)
 
 
-def _decoded(sequence: tuple[int, ...], count: int) -> tuple[tuple[int, ...], ...]:
+def _decoded(sequence: tuple[int, ...], count: int) -> _Edges:
     """Tree of a Prüfer sequence."""
     degree = [1 + sequence.count(k) for k in range(count)]
     edges = []
