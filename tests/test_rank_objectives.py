@@ -2,13 +2,16 @@
 
 from __future__ import annotations
 
+import json
 from dataclasses import replace
 from fractions import Fraction
 
 import numpy as np
 import pytest
+from command import run
 from scipy.optimize import minimize
 
+from capmuster import catalogs
 from capmuster.enumerate.converters import table_of
 from capmuster.enumerate.errors import CapmusterError
 from capmuster.enumerate.wiring import Converter
@@ -333,3 +336,21 @@ def test_the_table_shows_every_term_and_they_add_up():
 def test_what_makes_no_sense_is_refused(changes, said):
     with pytest.raises(CapmusterError, match=said.replace("(", r"\(")):
         replace(FIXED, **changes)
+
+
+def test_the_command_shows_losses_and_what_is_proven(tmp_path):
+    brief = tmp_path / "node.toml"
+    text = catalogs.find("briefs", "greenhouse-node-losses").read_text()
+    brief.write_text(text.replace("capacitors = 4", "capacitors = 3"))
+    shown = run("rank", str(brief), "--top", "3").stdout
+    assert "least loss within the area, all losses counted, mean over the load profile" in shown
+    assert "5 % 3 mA, 15 % 400 µA, 80 % asleep" in shown
+    assert "no other topology with up to 3 capacitors is better than place 3" in shown
+    content = json.loads(run("rank", str(brief), "--top", "3", "--format", "json").stdout)
+    assert content["search"]["certificate"]["holds"] is True
+    first = content["candidates"][0]
+    terms = [value for name, value in first.items() if name.startswith("loss_") and name != "loss_W"]
+    assert sum(terms) == pytest.approx(first["loss_W"], rel=1e-9)
+    switch = next(one for one in first["elements"] if one["kind"] == "switch")
+    assert switch["supply"] in {"rails", "floating"}
+    assert switch["gate"][1] == switch["source"][1]
