@@ -87,8 +87,8 @@ def test_a_search_without_room_says_so_and_its_bound_holds(case, least):
 
 @pytest.mark.parametrize("loss", [1.65, 1.75, 2.2])
 def test_the_solver_goes_on_while_its_choice_breaks_a_limit(loss):
-    # Between the tangents that it starts with the blend is above all of them: here the first choice breaks the
-    # loss target, or at 2.2 W the limit on the impedance, and nothing is proven before more tangents are there.
+    # Between the tangents that it starts with the blend is above all of them: here the first choice breaks
+    # the loss target, or at 2.2 W the limit on the impedance, and nothing is proven before there are more.
     parts = replace(load_brief("pump-shelf").parts, least="price", footprint=None, loss=loss)
     *_, problem = posed(Converter.parse("O-G/a-O O-G/b-a O-G/I-b"), BRIEF, resolved(parts, BRIEF))
     by_labels, by_solver = search(problem), certify(problem, NOTHING)

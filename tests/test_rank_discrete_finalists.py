@@ -282,7 +282,10 @@ def test_the_command_gives_the_same_bytes_each_time(quarters):
     expected = document(choose_parts(brief, brief.parts, top=2))
     assert content == json.loads(json.dumps(expected))
     assert [one["place"] for one in content["finalists"]] == [1, 2]
-    assert content["provenance"]["stock_fingerprint"] == SHELF.parts.stock.fingerprint
+    origin = content["provenance"]
+    assert origin["stock_fingerprint"] == SHELF.parts.stock.fingerprint
+    other = json.loads(run(*arguments, "--temperature", "90 degC").stdout)["provenance"]
+    assert {name for name in origin if origin[name] != other[name]} == {"request_fingerprint"}
 
 
 def test_the_command_writes_rows_of_candidates_and_of_elements(capsys, quarters):

@@ -60,7 +60,7 @@ class Finalist:
     @property
     def gap(self) -> float:
         """Relative distance of the bound [1]."""
-        return (self.objective - self.bound) / self.objective
+        return (self.objective - self.bound) / self.objective if self.objective else 0.0
 
     @property
     def footprint(self) -> float:

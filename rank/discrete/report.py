@@ -12,6 +12,7 @@ from capmuster.rank.discrete.design import LossTerms
 from capmuster.rank.discrete.problem import operating_input
 from capmuster.rank.parts import CapacitorPart
 from capmuster.rank.quantity import format_quantity
+from capmuster.rank.technology import fingerprint
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -261,12 +262,13 @@ def document(found: PartsShortlist) -> dict[str, object]:
 
 
 def provenance(found: PartsShortlist) -> dict[str, str]:
-    """Version and fingerprints of the brief, the technology and the stock."""
+    """Version and fingerprints of the brief, the technology, the stock and all that was asked of the parts."""
     return {
         "capmuster_version": __version__,
         "brief_fingerprint": found.brief.fingerprint,
         "technology_fingerprint": found.brief.technology.fingerprint,
         "stock_fingerprint": found.request.stock.fingerprint,
+        "request_fingerprint": fingerprint(found.request.content()),
     }
 
 
