@@ -262,7 +262,7 @@ def document(found: PartsShortlist) -> dict[str, object]:
 
 
 def provenance(found: PartsShortlist) -> dict[str, str]:
-    """Version and fingerprints of the brief, the technology, the stock and all that was asked of the parts."""
+    """Version and fingerprints of brief, technology, stock and all that was asked of the parts."""
     return {
         "capmuster_version": __version__,
         "brief_fingerprint": found.brief.fingerprint,
