@@ -300,11 +300,13 @@ def test_the_command_writes_rows_of_candidates_and_of_elements(capsys, quarters)
 
 def test_the_command_says_what_was_asked_and_what_is_proven(capsys, quarters):
     changes = ("--least", "price", "--efficiency", "98 %", "--temperature", "100 degC")
+    changes += ("--capacitor-derating", "70 %")
     status, text, _ = call(capsys, quarters, "--top", "1", *changes)
     assert status == 0
     assert "made least         price" in text
     assert "efficiency at least 98 %" in text
     assert "junctions at       100 degC" in text
+    assert "capacitors to 70 %, switches to 80 % of the rating" in text
     assert "proven best" in text
     assert "has less price than place 1." in text
 
@@ -357,6 +359,7 @@ def test_nothing_is_written_where_one_file_cannot_be(capsys, quarters, tmp_path)
         (("pump-shelf", "--frequency", "0 Hz"), "--frequency: value '0 Hz' is zero"),
         (("pump-shelf", "--temperature", "400 degC"), "parts.temperature: value 400 is not allowed"),
         (("pump-shelf", "--loss", "2 W", "--efficiency", "90 %"), "loss and efficiency are both given"),
+        (("pump-shelf", "--switch-derating", "110 %"), "parts.switch_derating: value 1.1 is not allowed"),
         (("pump-shelf", "--series", "0"), "parts.series: value 0 is not allowed"),
         (("pump-shelf", "--top", "0"), "top: 0 is too small"),
         (("pump-shelf", "--include", "I-G"), "I-G"),

@@ -34,6 +34,8 @@ _TEXTUAL = {"id", "ratio", "families", "proven"}
 @click.option("--efficiency", metavar="SHARE", help="Least efficiency, such as '98 %', likewise.")
 @click.option("--frequency", "frequencies", multiple=True, metavar="F", help="Choose from these; repeat.")
 @click.option("--temperature", metavar="T", help="Junction temperature of the MOSFETs, such as '100 degC'.")
+@click.option("--capacitor-derating", metavar="SHARE", help="Share of its rating that a capacitor may see.")
+@click.option("--switch-derating", metavar="SHARE", help="Share of its rating that a MOSFET may see.")
 @click.option("--series", type=int, metavar="S", help="Most parts in series in one element.")
 @click.option("--include", multiple=True, metavar="WIRING", help="Rank this wiring (or id) with the rest.")
 @click.option("--elements", is_flag=True, help="With csv: one row per capacitor and switch.")
@@ -118,13 +120,20 @@ def _changed(request: PartsRequest, changes: dict[str, object]) -> PartsRequest:
     from capmuster.rank.quantity import read_quantity  # noqa: PLC0415
 
     units: dict[str, Unit] = {
-        "footprint": "mm2", "price": "EUR", "loss": "W", "efficiency": "1", "temperature": "degC"
-    }  # fmt: skip
+        "footprint": "mm2",
+        "price": "EUR",
+        "loss": "W",
+        "efficiency": "1",
+        "temperature": "degC",
+        "capacitor_derating": "1",
+        "switch_derating": "1",
+    }
     values: dict[str, object] = {}
     for name, unit in units.items():
         if changes[name] is not None:
             sign: Sign = "any" if name == "temperature" else "positive"
-            values[name] = read_quantity(f"--{name}", changes[name], unit, sign=sign)
+            option = f"--{name.replace('_', '-')}"
+            values[name] = read_quantity(option, changes[name], unit, sign=sign)
     if changes["frequencies"]:
         values["frequencies"] = tuple(
             read_quantity("--frequency", one, "Hz")
