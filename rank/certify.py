@@ -10,7 +10,7 @@ import numpy as np
 from capmuster.rank.evaluation import evaluation_of
 from capmuster.rank.exactchoice import ExactChoice, exact_choice, out_of_reach
 from capmuster.rank.pool import Pool, efficiency_floor, reordered
-from capmuster.rank.screening import can_be_exact, droop_within_reach
+from capmuster.rank.screening import can_be_exact, within_reach
 from capmuster.rank.structs import placed
 
 if TYPE_CHECKING:
@@ -185,7 +185,7 @@ def _unsized_within_reach(pool: Pool, brief: Brief, limit: float) -> int:
         return len(open_)
     count = 0
     for converter in open_:
-        if droop_within_reach(converter, brief):
+        if within_reach(converter, brief):
             one = exact_choice(converter, brief, limit)
             if one is None:
                 count += not out_of_reach(converter, brief)

@@ -93,13 +93,9 @@ def exact_choice(converter: Converter, brief: Brief, enough: float = np.inf) -> 
         Merit above which the exact choice is of no interest: the search stops once it is proven to be above.
     """
     network, start = start_of(converter, brief)
-    candidate, sized = choose_and_size(start)
+    candidate, sized = _first(network, start)
     if not np.isfinite(sized.merit[0]):
-        options = option_set(start, network, loss_points(brief, sized))
-        tried = build(start, network, options, least_impedances(options))
-        candidate, sized = _best(tried, size_candidates(tried))
-        if not np.isfinite(sized.merit[0]):
-            return None
+        return None
     source: Modelled = candidate
     probe, least = sized, -np.inf
     seen: set[Choice] = set()
@@ -127,6 +123,16 @@ def exact_choice(converter: Converter, brief: Brief, enough: float = np.inf) -> 
             break
         source, probe = between
     return _found(network, candidate, sized, min(least, float(sized.merit[0])), proven=False)
+
+
+def _first(network: SwitchNetwork, start: Candidates) -> tuple[Candidates, Sized]:
+    """Size a first choice; where the usual ones have no sizes, one that gives the least output impedance."""
+    candidate, sized = choose_and_size(start)
+    if np.isfinite(sized.merit[0]) or start.brief.drive == "rails":
+        return candidate, sized
+    options = option_set(start, network, loss_points(start.brief, sized))
+    tried = build(start, network, options, least_impedances(options))
+    return _best(tried, size_candidates(tried))
 
 
 def _best(tried: Candidates, found: Sized) -> tuple[Candidates, Sized]:
@@ -254,7 +260,7 @@ def _tree_options(
     vertex: VertexTrees, pairs: Floats, excess: Floats, room: Floats
 ) -> Iterator[tuple[VertexChoice, Floats]]:
     """Yield trees with classes that leave room."""
-    best = pairs.min(axis=1)
+    best = np.nan_to_num(pairs.min(axis=1), posinf=0.0)  # a barred pair is in no tree that is left
     for tree, beyond in _options_within(excess, room):
         edges = edges_of(vertex, tree)
         switches: list[list[tuple[int, Floats]]] = []

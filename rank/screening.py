@@ -14,8 +14,10 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from capmuster.enumerate.converters import table_of
 from capmuster.rank.blend import Blend
 from capmuster.rank.classprices import at_prices
+from capmuster.rank.gatedrive import rail_driven
 from capmuster.rank.losses import (
     capacitor_coefficients,
     every_class,
@@ -24,6 +26,7 @@ from capmuster.rank.losses import (
     switch_coefficients,
 )
 from capmuster.rank.objectives import better_mix, priced_model, relaxed_bound, size_at_mix, total_cost
+from capmuster.rank.optioncosts import pair_table
 from capmuster.rank.profile import loss_points
 from capmuster.rank.structs import placed, rows_of
 from capmuster.rank.switching import switch_network
@@ -40,6 +43,8 @@ if TYPE_CHECKING:
     from capmuster.rank.operation import Candidates, Modelled
     from capmuster.rank.profile import LossPoint
     from capmuster.rank.sizing import Prices
+    from capmuster.rank.switching import SwitchNetwork
+    from capmuster.rank.trees import VertexTrees
 
     Floats = NDArray[np.float64]
 
@@ -96,16 +101,21 @@ def _unsized_bound(candidates: Candidates, relaxed: Candidates) -> Floats:
     return bound
 
 
-def droop_within_reach(converter: Converter, brief: Brief) -> bool:
-    """Whether any classes and switch trees of a converter could meet the droop within the area budgets.
+def within_reach(converter: Converter, brief: Brief) -> bool:
+    """Whether any classes and switch trees of a converter could be driven, and meet the droop in the budgets.
 
     For every angle ``R_out >= cos x + sin y``, and each of the two is least where areas are shared by the
     Cauchy-Schwarz inequality (see `capmuster.rank.areas`), at the highest frequency. In regulated use
     voltages are ideal here, which is below any that elements must be rated for.
     """
+    technology, network, balance = brief.technology, switch_network(converter), converter.balance
+    vertices = trees_of(network)
+    if not all(vertex.whole for vertex in vertices):
+        return True
+    if brief.drive == "rails" and not all(_drivable(converter, network, one, brief) for one in vertices):
+        return False
     if brief.area is None and brief.silicon_area is None:
         return True
-    technology, network, balance = brief.technology, switch_network(converter), converter.balance
     classes, volts = technology.capacitor_columns(), brief.input_maximum
     held = np.array([float(abs(v)) for v in balance.voltages]) * volts
     charge = np.array([abs(q) / abs(balance.port_charges[_O]) for q in balance.charges])
@@ -116,9 +126,6 @@ def droop_within_reach(converter: Converter, brief: Brief) -> bool:
     series = stack * classes.series_resistance / (duty * (1 - duty))
     capacitors = np.sqrt(np.cos(angle) * slow + np.sin(angle) * series).min(axis=-1).sum(axis=-1)
     switches = 0.0
-    vertices = trees_of(network)
-    if not all(vertex.whole for vertex in vertices):
-        return True
     for vertex in vertices:
         share = 1.0 if brief.duty is None else (duty if vertex.phase == 1 else 1 - duty)
         cost = np.sqrt(technology.switch_choice(vertex.blocking * volts).cost / share)
@@ -130,6 +137,12 @@ def droop_within_reach(converter: Converter, brief: Brief) -> bool:
         reached = capacitors**2 / (brief.capacitor_area or np.inf) + on**2 / (brief.silicon_area or np.inf)
     limit = float(brief.r_max(float(converter.ratio))) - technology.wiring_resistance
     return bool(reached.max() < limit * (1 + _ROUNDING))
+
+
+def _drivable(converter: Converter, network: SwitchNetwork, vertex: VertexTrees, brief: Brief) -> bool:
+    """Whether the rails can drive all switches of some tree of a vertex."""
+    able = rail_driven(table_of([converter]), pair_table(network, vertex), brief)[0].any(axis=-1)
+    return bool((np.isnan(vertex.charges) | able).all(axis=1).any())
 
 
 @dataclass(frozen=True, slots=True)

@@ -26,6 +26,7 @@ def test_every_shipped_file_loads():
         "greenhouse-node",
         "greenhouse-node-losses",
         "greenhouse-node-regulated",
+        "greenhouse-node-regulated-losses",
         "pump-shelf",
         "pump-shelf-losses",
     )

@@ -288,8 +288,8 @@ def test_an_unknown_name_lists_what_is_shipped():
         load_brief("greenhous-node")
     assert str(caught.value) == (
         "unknown brief 'greenhous-node'; did you mean 'greenhouse-node'?; accepted: greenhouse-node, "
-        "greenhouse-node-losses, greenhouse-node-regulated, pump-shelf, pump-shelf-losses, or the path of a "
-        ".toml file"
+        "greenhouse-node-losses, greenhouse-node-regulated, greenhouse-node-regulated-losses, pump-shelf, "
+        "pump-shelf-losses, or the path of a .toml file"
     )
 
 

@@ -13,7 +13,7 @@ import pytest
 from capmuster.enumerate.converters import converters
 from capmuster.enumerate.wiring import Converter
 from capmuster.rank.brief import load_brief
-from capmuster.rank.choices import Choice, build, start_of
+from capmuster.rank.choices import Choice, build, edges_of, start_of
 from capmuster.rank.circuit import circuit_of
 from capmuster.rank.conditions import LoadPoint
 from capmuster.rank.exactchoice import exact_choice
@@ -230,3 +230,31 @@ def test_what_the_user_puts_in_is_found_exactly_too():
     place = found.included[0].place - 1
     alone = exact_choice(converter, NODE)
     assert found.pool.evaluation.merit[place] == pytest.approx(alone.sized.merit[0], rel=1e-9)
+
+
+def test_rails_leave_fewer_choices_and_brute_force_agrees():
+    # With both polarities: every choice whose switches the rails can all drive.
+    brief = few_classes(
+        replace(NODE, input_minimum=3.7, required=1.3, drive="rails"),
+        {"mos-3v3", "mim-5v"}, {"nmos-1v8", "nmos-3v3", "pmos-3v3"},
+    )  # fmt: skip
+    converter = Converter.parse("O-G/I-O")
+    network, start = start_of(converter, brief)
+    options = option_set(start, network, loss_points(brief, size_candidates(start)))
+    allowed = [
+        one
+        for one in every_choice(options)
+        if all(
+            np.isfinite(options.fast[v][p, k])
+            for v, (tree, classes) in enumerate(one.vertices)
+            for p, k in zip(edges_of(options.vertices[v], tree), classes, strict=True)
+        )
+    ]
+    assert 0 < len(allowed) < len(every_choice(options))
+    best = np.nanmin(size_candidates(build(start, network, options, allowed)).merit)
+    found = exact_choice(converter, brief)
+    assert found.proven
+    assert found.sized.merit[0] == pytest.approx(best, rel=1e-8)
+    assert shortlist(brief, top=1).frame["floating_drives"][0] == 0
+    free = exact_choice(converter, replace(brief, drive="any"))
+    assert free.sized.merit[0] <= found.sized.merit[0] * (1 + 1e-9)
