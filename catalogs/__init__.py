@@ -1,4 +1,4 @@
-"""Shipped data: technologies, catalogs of parts and example briefs, found by name."""
+"""Shipped data: technologies, catalogs of parts, example briefs and small censuses."""
 
 from __future__ import annotations
 
@@ -19,6 +19,11 @@ def names(shelf: Shelf) -> tuple[str, ...]:
 def find(shelf: Shelf, name: str) -> Path | None:
     """Path of the shipped file with this name, or None if there is none."""
     return _ROOM / shelf / f"{name}{_suffix(shelf)}" if name in names(shelf) else None
+
+
+def census_file(n: int) -> Path:
+    """Path of the shipped census of ``n`` flying capacitors."""
+    return _ROOM / "census" / f"n{n}.census"
 
 
 def _suffix(shelf: Shelf) -> str:

@@ -137,8 +137,7 @@ def _plate_potentials(
 def converters(n: int, ratio: Fraction | None = None) -> ConverterTable:
     """Return the census converters of exactly ``n`` capacitors, of one ratio or of all.
 
-    All converters of five capacitors are some eight million; `capmuster.rank.candidates` gives them ratio by
-    ratio, from a file.
+    All converters of five capacitors are some eight million; a census file gives them ratio by ratio.
 
     Raises
     ------

@@ -9,17 +9,17 @@ import numpy as np
 
 from capmuster.enumerate.converters import table_of
 from capmuster.rank.areas import element_areas
-from capmuster.rank.devicechoice import choose_and_size
+from capmuster.rank.design.devicechoice import choose_and_size
+from capmuster.rank.design.gatedrive import gate_drives
+from capmuster.rank.design.operation import Candidates
 from capmuster.rank.evaluation import choose_elements
-from capmuster.rank.gatedrive import gate_drives
-from capmuster.rank.networktable import network_table
-from capmuster.rank.operation import Candidates
-from capmuster.rank.switching import switch_network
+from capmuster.rank.scores.networktable import network_table
+from capmuster.rank.scores.switching import switch_network
 
 if TYPE_CHECKING:
     from capmuster.enumerate.wiring import Converter
-    from capmuster.rank.brief import Brief
-    from capmuster.rank.exactchoice import ExactChoice
+    from capmuster.rank.design.exactchoice import ExactChoice
+    from capmuster.rank.inputs.brief import Brief
 
 
 @dataclass(frozen=True, slots=True)
@@ -31,7 +31,7 @@ class Element:
     kind
         "capacitor" or "switch".
     name
-        As in `capmuster.rank.switching` and in the wiring's order: C1, ..., S1, ....
+        As in `capmuster.rank.scores.switching` and in the wiring's order: C1, ..., S1, ....
     nodes
         Names of its two nodes; of a switch the positive one first while it blocks.
     phase

@@ -8,25 +8,25 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from capmuster.rank.areas import fast_coefficient, least_area, slow_coefficient
-from capmuster.rank.classprices import ClassCosts, cheapest
-from capmuster.rank.devicechoice import choose_and_size
-from capmuster.rank.gatedrive import floating_drives, rail_driven
-from capmuster.rank.losses import series_counts
-from capmuster.rank.networktable import network_table
-from capmuster.rank.operation import Candidates
-from capmuster.rank.screening import can_be_exact, merit_bound
-from capmuster.rank.switching import switch_network
-from capmuster.rank.switchtable import score, switch_table
+from capmuster.rank.design.classprices import ClassCosts, cheapest
+from capmuster.rank.design.devicechoice import choose_and_size
+from capmuster.rank.design.gatedrive import floating_drives, rail_driven
+from capmuster.rank.design.losses import series_counts
+from capmuster.rank.design.operation import Candidates
+from capmuster.rank.design.screening import can_be_exact, merit_bound
+from capmuster.rank.scores.networktable import network_table
+from capmuster.rank.scores.switching import switch_network
+from capmuster.rank.scores.switchtable import score, switch_table
 from capmuster.rank.worstcase import ratings
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from capmuster.enumerate.converters import ConverterTable
-    from capmuster.rank.brief import Brief
-    from capmuster.rank.objectives import Sized
-    from capmuster.rank.switchtable import SwitchTable
-    from capmuster.rank.technology import Choice
+    from capmuster.rank.design.objectives import Sized
+    from capmuster.rank.inputs.brief import Brief
+    from capmuster.rank.inputs.technology import Choice
+    from capmuster.rank.scores.switchtable import SwitchTable
     from capmuster.rank.worstcase import Ratings
 
 _I, _O = 1, 2
@@ -80,7 +80,7 @@ class Evaluation:
     switches
         Number of switches.
     capacitor_utilisation, switch_utilisation
-        See `capmuster.rank.utilisation` [1].
+        See `capmuster.rank.scores.utilisation` [1].
     highest_capacitor_voltage, highest_blocking_voltage
         Highest voltage that a capacitor, and that a switch, must stand [V].
     output_evenness

@@ -12,12 +12,12 @@ import numpy as np
 from capmuster.enumerate.census import CENSUS_REACH
 from capmuster.enumerate.converters import ConverterTable, converters, table_of
 from capmuster.enumerate.families import members
-from capmuster.rank.candidates import census_ratios
 from capmuster.rank.evaluation import Evaluation, evaluate, worst_efficiency
 from capmuster.rank.frontier import frontier
-from capmuster.rank.screened import Source, screened
+from capmuster.rank.scores.candidates import census_ratios
+from capmuster.rank.scores.screened import Source, screened
+from capmuster.rank.scores.switchtable import score
 from capmuster.rank.structs import joined, rows_of
-from capmuster.rank.switchtable import score
 
 if TYPE_CHECKING:
     from collections.abc import Callable, Iterator, Sequence
@@ -25,8 +25,8 @@ if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from capmuster.enumerate.wiring import Converter
-    from capmuster.rank.brief import Brief
-    from capmuster.rank.switchtable import Scores
+    from capmuster.rank.inputs.brief import Brief
+    from capmuster.rank.scores.switchtable import Scores
 
 _I, _O = 1, 2
 _UNCLEAN = "a switch is idle or blocks no voltage"

@@ -11,7 +11,7 @@ if TYPE_CHECKING:
 
     from rich.progress import Progress, TaskID
 
-    from capmuster.rank.scoredcensus import Note
+    from capmuster.rank.scores.scoredcensus import Note
 
 
 @contextmanager

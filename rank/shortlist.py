@@ -11,20 +11,20 @@ import numpy as np
 from capmuster.enumerate.errors import CapmusterError
 from capmuster.enumerate.families import family_names
 from capmuster.rank._version import __version__
-from capmuster.rank.cautions import cautions
-from capmuster.rank.certify import certify
-from capmuster.rank.choices import start_of
-from capmuster.rank.columns import COLUMNS, Column, columns_of
-from capmuster.rank.devicechoice import choose_and_size
+from capmuster.rank.design.certify import certify
+from capmuster.rank.design.choices import start_of
+from capmuster.rank.design.devicechoice import choose_and_size
+from capmuster.rank.design.lossvalues import capacitor_values, loss_values, spread_values
+from capmuster.rank.design.tolerance import spreads
 from capmuster.rank.elements import Element, elements_of
 from capmuster.rank.evaluation import ceiling, efficiency
-from capmuster.rank.finalist import finalists
-from capmuster.rank.finaltable import EXACT_COLUMNS, finalist_frame
-from capmuster.rank.lossvalues import capacitor_values, loss_values, spread_values
+from capmuster.rank.exact.finalist import finalists
+from capmuster.rank.exact.finaltable import EXACT_COLUMNS, finalist_frame
+from capmuster.rank.files.columns import COLUMNS, Column, columns_of
+from capmuster.rank.inputs.cautions import cautions
 from capmuster.rank.pool import Pool, gather
+from capmuster.rank.scores.switching import switch_network
 from capmuster.rank.structs import rows_of
-from capmuster.rank.switching import switch_network
-from capmuster.rank.tolerance import spreads
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
@@ -32,14 +32,14 @@ if TYPE_CHECKING:
     import pandas as pd
 
     from capmuster.enumerate.wiring import Converter
-    from capmuster.rank.brief import Brief
-    from capmuster.rank.certify import Certificate
-    from capmuster.rank.exactchoice import ExactChoice
-    from capmuster.rank.finalist import Finalist
-    from capmuster.rank.objectives import Sized
-    from capmuster.rank.operation import Candidates
-    from capmuster.rank.switching import SwitchNetwork
-    from capmuster.rank.tolerance import Spread
+    from capmuster.rank.design.certify import Certificate
+    from capmuster.rank.design.exactchoice import ExactChoice
+    from capmuster.rank.design.objectives import Sized
+    from capmuster.rank.design.operation import Candidates
+    from capmuster.rank.design.tolerance import Spread
+    from capmuster.rank.exact.finalist import Finalist
+    from capmuster.rank.inputs.brief import Brief
+    from capmuster.rank.scores.switching import SwitchNetwork
 
 __all__ = ["COLUMNS", "Column", "Included", "Shortlist", "shortlist"]
 

@@ -38,8 +38,8 @@ if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from capmuster.enumerate.converters import ConverterTable
-    from capmuster.rank.brief import Brief
-    from capmuster.rank.switchtable import SwitchTable
+    from capmuster.rank.inputs.brief import Brief
+    from capmuster.rank.scores.switchtable import SwitchTable
 
 _NOTHING = 1e-9
 _STRAY = 1e-6  # resistance in series with every capacitor, beside 1 over a charge number

@@ -8,14 +8,14 @@ from dataclasses import replace
 from hypothesis import strategies as st
 
 from capmuster.enumerate.wiring import Converter
-from capmuster.rank.brief import load_brief
 from capmuster.rank.discrete.blends import QUADRATIC
 from capmuster.rank.discrete.labels import Outcome
 from capmuster.rank.discrete.options import OptionBook, Units
 from capmuster.rank.discrete.problem import pose, resolved
 from capmuster.rank.discrete.slots import slots_of
-from capmuster.rank.parts import CapacitorPart, Stock, SwitchPart
-from capmuster.rank.parts_request import PartsRequest
+from capmuster.rank.inputs.brief import load_brief
+from capmuster.rank.inputs.parts import CapacitorPart, Stock, SwitchPart
+from capmuster.rank.inputs.parts_request import PartsRequest
 
 BRIEF = replace(load_brief("pump-shelf"), efficiency_floor=None, parts=None)
 HALVER = Converter.parse("I-O/O-G")

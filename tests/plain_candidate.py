@@ -13,13 +13,13 @@ from typing import TYPE_CHECKING
 import numpy as np
 from scipy.optimize import minimize, minimize_scalar
 
-from capmuster.rank.utilisation import charge_flow
+from capmuster.rank.scores.utilisation import charge_flow
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
 
     from capmuster.enumerate.wiring import Converter
-    from capmuster.rank.brief import Brief
+    from capmuster.rank.inputs.brief import Brief
 
 
 @dataclass(frozen=True, slots=True)

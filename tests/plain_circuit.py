@@ -14,7 +14,7 @@ from scipy.linalg import expm
 
 from capmuster.enumerate.errors import CapmusterError
 from capmuster.enumerate.wiring import Converter
-from capmuster.rank.circuit import Capacitor, Circuit, PlateParasitic, Switch
+from capmuster.rank.exact.circuit import Capacitor, Circuit, PlateParasitic, Switch
 
 POINTS = 400
 

@@ -12,14 +12,14 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from capmuster.enumerate.converters import table_of
-from capmuster.rank.networktable import network_table
-from capmuster.rank.switching import switch_network
+from capmuster.rank.scores.networktable import network_table
+from capmuster.rank.scores.switching import switch_network
 from capmuster.rank.worstcase import ratings
 
 if TYPE_CHECKING:
     from capmuster.enumerate.wiring import Converter
-    from capmuster.rank.brief import Brief
-    from capmuster.rank.parts_request import PartsRequest
+    from capmuster.rank.inputs.brief import Brief
+    from capmuster.rank.inputs.parts_request import PartsRequest
 
 
 @dataclass(frozen=True, slots=True)

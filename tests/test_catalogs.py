@@ -12,8 +12,8 @@ from fractions import Fraction
 import pytest
 
 from capmuster import catalogs
-from capmuster.rank.brief import load_brief
-from capmuster.rank.technology import load_technology
+from capmuster.rank.inputs.brief import load_brief
+from capmuster.rank.inputs.technology import load_technology
 
 CHIP_TECHNOLOGY, BOARD_TECHNOLOGY = load_technology("chip-180nm"), load_technology("board-discrete")
 CHIP = {one.name: one for one in (*CHIP_TECHNOLOGY.capacitors, *CHIP_TECHNOLOGY.switches)}
@@ -49,7 +49,8 @@ def test_a_name_is_a_name_and_no_path():
 def test_finding_a_file_loads_no_library():
     code = (
         "import sys, capmuster.catalogs as c; c.names('briefs');"
-        "print({'capmuster.enumerate', 'capmuster.rank.technology', 'pydantic', 'numpy'} & set(sys.modules))"
+        "heavy = {'capmuster.enumerate', 'capmuster.rank.inputs.technology', 'pydantic', 'numpy'};"
+        "print(heavy & set(sys.modules))"
     )
     done = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True)
     assert done.stdout.strip() == "set()"

@@ -16,9 +16,9 @@ from capmuster.enumerate import store
 from capmuster.enumerate.skeletons import skeletons
 from capmuster.enumerate.store import StoreError, open_census, write_census
 from capmuster.enumerate.tally import Tally
-from capmuster.rank import scoredcensus
-from capmuster.rank.cellscores import concatenate, score_cells
-from capmuster.rank.scoredcensus import ScoredCensus, census_path, scored_census, write_scored_census
+from capmuster.rank.scores import scoredcensus
+from capmuster.rank.scores.cellscores import concatenate, score_cells
+from capmuster.rank.scores.scoredcensus import ScoredCensus, census_path, scored_census, write_scored_census
 
 
 @pytest.fixture
@@ -212,7 +212,7 @@ def test_a_written_file_has_the_usual_permissions(tmp_path):
 
 
 BUILD = """
-from capmuster.rank import scoredcensus
+from capmuster.rank.scores import scoredcensus
 scoredcensus.SHIPPED_REACH = 2
 said = []
 census = scoredcensus.ScoredCensus(4, lambda note: said.append(note.text))

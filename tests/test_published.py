@@ -16,8 +16,8 @@ from capmuster.enumerate.census import census
 from capmuster.enumerate.converters import converters
 from capmuster.enumerate.families import dickson, doubler_chain, fibonacci, ladder, series_parallel
 from capmuster.enumerate.wiring import Converter
-from capmuster.rank.switchtable import score
-from capmuster.rank.utilisation import charge_flow
+from capmuster.rank.scores.switchtable import score
+from capmuster.rank.scores.utilisation import charge_flow
 
 SIZES = (2, 3, 4, 5, 6, 8, 12, 20)
 STAGES = (1, 2, 3, 4, 5, 6, 9)

@@ -16,9 +16,9 @@ from hypothesis import strategies as st
 
 from capmuster import catalogs
 from capmuster.enumerate.errors import CapmusterError
-from capmuster.rank.brief import Brief, load_brief
-from capmuster.rank.cautions import cautions
-from capmuster.rank.technology import load_technology
+from capmuster.rank.inputs.brief import Brief, load_brief
+from capmuster.rank.inputs.cautions import cautions
+from capmuster.rank.inputs.technology import load_technology
 
 NODE = load_brief("greenhouse-node")
 PUMP = load_brief("pump-shelf")
@@ -361,7 +361,7 @@ def test_a_brief_made_by_hand_is_checked_as_well(change):
 
 def test_reading_a_brief_is_what_loads_the_validation_library():
     code = (
-        "import sys; from capmuster.rank.brief import load_brief;"
+        "import sys; from capmuster.rank.inputs.brief import load_brief;"
         "print('pydantic' in sys.modules); load_brief('pump-shelf'); print('pydantic' in sys.modules)"
     )
     done = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True)

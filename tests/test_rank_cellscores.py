@@ -12,11 +12,11 @@ from capmuster.enumerate.census import Addresses, cells_at, census
 from capmuster.enumerate.skeletons import skeletons
 from capmuster.enumerate.tally import Tally
 from capmuster.enumerate.wiring import Converter
-from capmuster.rank.candidates import candidates_between, census_candidates, census_ratios
-from capmuster.rank.cellscores import concatenate, score_cells
-from capmuster.rank.scoredcensus import scored_census
-from capmuster.rank.switchtable import score, switch_table
-from capmuster.rank.utilisation import charge_flow
+from capmuster.rank.scores.candidates import candidates_between, census_candidates, census_ratios
+from capmuster.rank.scores.cellscores import concatenate, score_cells
+from capmuster.rank.scores.scoredcensus import scored_census
+from capmuster.rank.scores.switchtable import score, switch_table
+from capmuster.rank.scores.utilisation import charge_flow
 
 SAMPLE = {4: 150, 5: 150}
 

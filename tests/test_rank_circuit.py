@@ -9,11 +9,11 @@ import pytest
 
 from capmuster.enumerate.errors import CapmusterError
 from capmuster.enumerate.wiring import Converter
-from capmuster.rank.circuit import circuit_of
-from capmuster.rank.impedance import output_impedance
-from capmuster.rank.operating import operate
-from capmuster.rank.steadystate import SteadyState
-from capmuster.rank.switching import switch_network
+from capmuster.rank.exact.circuit import circuit_of
+from capmuster.rank.exact.impedance import output_impedance
+from capmuster.rank.exact.operating import operate
+from capmuster.rank.exact.steadystate import SteadyState
+from capmuster.rank.scores.switching import switch_network
 
 TRIPLER = Converter.parse("I-G/a-I I-G/O-a")
 

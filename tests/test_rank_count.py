@@ -11,8 +11,8 @@ from plain_enumerator import plain_census
 from capmuster.enumerate import certificate as certificates
 from capmuster.enumerate.census import census
 from capmuster.rank import cli
-from capmuster.rank.counting import census_counts, count_census
-from capmuster.rank.switchtable import score
+from capmuster.rank.scores.counting import census_counts, count_census
+from capmuster.rank.scores.switchtable import score
 
 
 @pytest.mark.parametrize("n", [1, 2, pytest.param(3, marks=pytest.mark.long)])

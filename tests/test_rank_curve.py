@@ -11,9 +11,9 @@ from click.testing import CliRunner
 
 from capmuster.enumerate.errors import CapmusterError
 from capmuster.rank.commands.curve import command
-from capmuster.rank.curve import HEADER, curve
-from capmuster.rank.curvepicture import picture
-from capmuster.rank.subject import Values, is_brief, subjects
+from capmuster.rank.exact.curve import HEADER, curve
+from capmuster.rank.exact.curvepicture import picture
+from capmuster.rank.exact.subject import Values, is_brief, subjects
 
 TRIPLER = "I-G/a-I I-G/O-a"
 

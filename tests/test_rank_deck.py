@@ -10,14 +10,14 @@ from capmuster.enumerate.converters import converters
 from capmuster.enumerate.errors import CapmusterError
 from capmuster.enumerate.families import dickson, doubler_chain, fibonacci, ladder, series_parallel
 from capmuster.enumerate.wiring import Converter
-from capmuster.rank import simulate as simulating
-from capmuster.rank.circuit import circuit_of
-from capmuster.rank.deck import bench_for, write_deck
-from capmuster.rank.impedance import corner_frequency, output_impedance
-from capmuster.rank.operating import operate
-from capmuster.rank.simulate import simulate
-from capmuster.rank.steadystate import SteadyState
-from capmuster.rank.switching import switch_network
+from capmuster.rank.exact import simulate as simulating
+from capmuster.rank.exact.circuit import circuit_of
+from capmuster.rank.exact.deck import bench_for, write_deck
+from capmuster.rank.exact.impedance import corner_frequency, output_impedance
+from capmuster.rank.exact.operating import operate
+from capmuster.rank.exact.simulate import simulate
+from capmuster.rank.exact.steadystate import SteadyState
+from capmuster.rank.scores.switching import switch_network
 
 TRIPLER = Converter.parse("I-G/a-I I-G/O-a")
 FAMILIES = {

@@ -10,7 +10,7 @@ from strategies import census_converters, family_converters
 
 from capmuster.enumerate.families import family_names, ladder
 from capmuster.enumerate.wiring import Converter
-from capmuster.rank.detail import detail
+from capmuster.rank.scores.detail import detail
 
 
 @settings(max_examples=60)

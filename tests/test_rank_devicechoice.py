@@ -12,19 +12,19 @@ import pytest
 
 from capmuster.enumerate.converters import converters
 from capmuster.enumerate.wiring import Converter
-from capmuster.rank.brief import load_brief
-from capmuster.rank.choices import Choice, build, edges_of, start_of
-from capmuster.rank.circuit import circuit_of
-from capmuster.rank.conditions import LoadPoint
-from capmuster.rank.exactchoice import exact_choice
-from capmuster.rank.impedance import output_impedance
-from capmuster.rank.objectives import size_candidates
-from capmuster.rank.optioncosts import option_set
+from capmuster.rank.design.choices import Choice, build, edges_of, start_of
+from capmuster.rank.design.exactchoice import exact_choice
+from capmuster.rank.design.objectives import size_candidates
+from capmuster.rank.design.optioncosts import option_set
+from capmuster.rank.design.profile import loss_points
+from capmuster.rank.design.trees import trees_of
+from capmuster.rank.exact.circuit import circuit_of
+from capmuster.rank.exact.impedance import output_impedance
+from capmuster.rank.inputs.brief import load_brief
+from capmuster.rank.inputs.conditions import LoadPoint
 from capmuster.rank.pool import gather
-from capmuster.rank.profile import loss_points
+from capmuster.rank.scores.switching import switch_network
 from capmuster.rank.shortlist import shortlist
-from capmuster.rank.switching import switch_network
-from capmuster.rank.trees import trees_of
 
 NODE = replace(
     load_brief("greenhouse-node"), objective="least-loss", frequency_minimum=1e6, frequency=5e7,

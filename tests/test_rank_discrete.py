@@ -15,7 +15,6 @@ from plain_parts import all_choices
 
 from capmuster.enumerate.errors import CapmusterError
 from capmuster.enumerate.wiring import Converter
-from capmuster.rank.brief import load_brief
 from capmuster.rank.discrete.blends import LOOP, QUADRATIC
 from capmuster.rank.discrete.certify import certify
 from capmuster.rank.discrete.design import fill
@@ -23,8 +22,9 @@ from capmuster.rank.discrete.labels import search
 from capmuster.rank.discrete.options import NoPartError
 from capmuster.rank.discrete.problem import resolved
 from capmuster.rank.discrete.relaxed import relax
-from capmuster.rank.parts import Stock
-from capmuster.rank.parts_request import PartsRequest
+from capmuster.rank.inputs.brief import load_brief
+from capmuster.rank.inputs.parts import Stock
+from capmuster.rank.inputs.parts_request import PartsRequest
 
 # Everything against trying everything.
 

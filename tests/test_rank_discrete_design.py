@@ -11,12 +11,12 @@ from parts_cases import BRIEF, cases, posed
 from plain_circuit import steady
 
 from capmuster.enumerate.wiring import Converter
-from capmuster.rank.brief import load_brief
-from capmuster.rank.circuit import circuit_of
 from capmuster.rank.discrete.blends import LOOP, QUADRATIC
 from capmuster.rank.discrete.design import condition, exact_impedance, fill, holding_frequency
 from capmuster.rank.discrete.labels import search
 from capmuster.rank.discrete.problem import resolved
+from capmuster.rank.exact.circuit import circuit_of
+from capmuster.rank.inputs.brief import load_brief
 
 
 @given(case=cases(), volts=st.floats(44, 56))

@@ -21,7 +21,6 @@ from scipy.optimize import Bounds, LinearConstraint, milp
 from capmuster import catalogs
 from capmuster.enumerate.errors import CapmusterError
 from capmuster.enumerate.wiring import Converter
-from capmuster.rank.brief import load_brief
 from capmuster.rank.cli import main
 from capmuster.rank.discrete.blends import LOOP, QUADRATIC
 from capmuster.rank.discrete.bulk import pool_bounds
@@ -33,9 +32,10 @@ from capmuster.rank.discrete.problem import pose, reported, resolved, stacked
 from capmuster.rank.discrete.relaxed import relax
 from capmuster.rank.discrete.report import COLUMNS, ELEMENT_COLUMNS, TERMS, document, element_frame, frame
 from capmuster.rank.discrete.slots import slots_of
-from capmuster.rank.parts import Stock
+from capmuster.rank.inputs.brief import load_brief
+from capmuster.rank.inputs.parts import Stock
 from capmuster.rank.pool import gather
-from capmuster.rank.switching import switch_network
+from capmuster.rank.scores.switching import switch_network
 
 SHELF = load_brief("pump-shelf")
 HELD = replace(SHELF, use="regulated", required=10.0, efficiency_floor=None, objective="least-loss", duty=0.4)

@@ -15,7 +15,7 @@ from capmuster.enumerate.families import dickson, fibonacci, ladder, members, se
 from capmuster.rank.drawing.schematic import schematic
 from capmuster.rank.drawing.shapes import Drawing, Line
 from capmuster.rank.drawing.sheet import converter_sheet
-from capmuster.rank.switching import switch_network
+from capmuster.rank.scores.switching import switch_network
 
 if TYPE_CHECKING:
     from capmuster.enumerate.wiring import Converter

@@ -10,11 +10,11 @@ from strategies import census_converters, family_converters
 
 from capmuster.enumerate.converters import table_of
 from capmuster.enumerate.wiring import Converter
-from capmuster.rank.brief import load_brief
-from capmuster.rank.detail import detail
 from capmuster.rank.elements import elements_of
-from capmuster.rank.networktable import network_table
-from capmuster.rank.switchtable import score, switch_table
+from capmuster.rank.inputs.brief import load_brief
+from capmuster.rank.scores.detail import detail
+from capmuster.rank.scores.networktable import network_table
+from capmuster.rank.scores.switchtable import score, switch_table
 
 BRIEF = load_brief("pump-shelf")
 

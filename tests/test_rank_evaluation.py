@@ -13,12 +13,12 @@ from strategies import census_converters, family_converters
 
 from capmuster.enumerate.converters import converters, table_of
 from capmuster.enumerate.wiring import Converter
-from capmuster.rank.brief import load_brief
 from capmuster.rank.elements import elements_of
 from capmuster.rank.evaluation import evaluate, output_evenness
-from capmuster.rank.switchtable import score
-from capmuster.rank.technology import load_technology
-from capmuster.rank.utilisation import charge_flow
+from capmuster.rank.inputs.brief import load_brief
+from capmuster.rank.inputs.technology import load_technology
+from capmuster.rank.scores.switchtable import score
+from capmuster.rank.scores.utilisation import charge_flow
 
 BASE = load_brief("greenhouse-node")
 TECHNOLOGIES = (load_technology("chip-180nm"), load_technology("board-discrete"))

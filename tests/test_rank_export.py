@@ -20,10 +20,10 @@ from markdown_it import MarkdownIt
 
 from capmuster.enumerate.errors import CapmusterError
 from capmuster.enumerate.wiring import Converter
-from capmuster.rank import export as exporting
 from capmuster.rank._version import __version__
-from capmuster.rank.brief import load_brief
-from capmuster.rank.export import SUFFIXES, export
+from capmuster.rank.files import export as exporting
+from capmuster.rank.files.export import SUFFIXES, export
+from capmuster.rank.inputs.brief import load_brief
 from capmuster.rank.shortlist import shortlist
 
 # openpyxl does not know data bars of one colour, which xlsxwriter writes as an extension.
@@ -167,7 +167,7 @@ def test_a_hostile_title_stays_text(hostile, tmp_path):
 
 def test_a_csv_cell_never_starts_a_formula(hostile):
     """Common practice: a spreadsheet runs a CSV cell that begins with =, +, - or @ and is no number."""
-    from capmuster.rank.export_text import to_csv  # noqa: PLC0415
+    from capmuster.rank.files.export_text import to_csv  # noqa: PLC0415
 
     for row in csv.reader(io.StringIO(to_csv(hostile).decode())):
         for cell in row:
@@ -182,7 +182,7 @@ def test_all_or_none(ranked, tmp_path, monkeypatch):
     def failing(_):
         raise CapmusterError("cannot be rendered")
 
-    monkeypatch.setattr("capmuster.rank.export_workbook.to_workbook", failing)
+    monkeypatch.setattr("capmuster.rank.files.export_workbook.to_workbook", failing)
     with pytest.raises(CapmusterError, match="cannot be rendered"):
         export(ranked, [kept, tmp_path / "b.xlsx"])
     assert [one.name for one in tmp_path.iterdir()] == ["a.csv"]
@@ -210,7 +210,7 @@ def test_a_full_disk_changes_nothing(ranked, tmp_path, monkeypatch):
 SLOW_WRITE = """
 import sys, time
 from pathlib import Path
-from capmuster.rank import export
+from capmuster.rank.files import export
 real = export.os.fsync
 def slow(handle):
     print("writing", flush=True)

@@ -6,12 +6,12 @@ import numpy as np
 import plain_circuit
 import pytest
 
-from capmuster.rank.brief import load_brief
-from capmuster.rank.finalist import finalist, finalists
-from capmuster.rank.finaltable import COLUMNS, finalist_frame
-from capmuster.rank.impedance import output_impedance
+from capmuster.rank.exact.finalist import finalist, finalists
+from capmuster.rank.exact.finaltable import COLUMNS, finalist_frame
+from capmuster.rank.exact.impedance import output_impedance
+from capmuster.rank.exact.resizing import element_circuit
+from capmuster.rank.inputs.brief import load_brief
 from capmuster.rank.lookup import find_converter
-from capmuster.rank.resizing import element_circuit
 from capmuster.rank.shortlist import shortlist
 
 

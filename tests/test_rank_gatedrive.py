@@ -10,15 +10,15 @@ import pytest
 
 from capmuster.enumerate.converters import converters, table_of
 from capmuster.enumerate.wiring import Converter
-from capmuster.rank.brief import load_brief
+from capmuster.rank.design.gatedrive import gates, rail_driven
 from capmuster.rank.elements import elements_of, network_table
-from capmuster.rank.gatedrive import gates, rail_driven
+from capmuster.rank.inputs.brief import load_brief
 from capmuster.rank.pool import gather
-from capmuster.rank.switching import switch_network
-from capmuster.rank.switchtable import switch_table
+from capmuster.rank.scores.switching import switch_network
+from capmuster.rank.scores.switchtable import switch_table
 
 if TYPE_CHECKING:
-    from capmuster.rank.technology import Technology
+    from capmuster.rank.inputs.technology import Technology
 
 NODE = replace(load_brief("greenhouse-node"), efficiency_floor=None)
 
@@ -41,8 +41,8 @@ def find(drives, *nodes):
 
 
 def test_a_halver_with_n_channel_devices_by_hand():
-    # The switch from C1- to ground has its source at ground; the one from the input to C1+ has it at the input
-    # while it conducts, and needs a gate above all rails (common practice: bootstrap).
+    # The switch from C1- to ground has its source at ground; the one from the input to C1+ has it at the
+    # input while it conducts, and needs a gate above all rails (common practice: bootstrap).
     drives = drives_of("O-G/I-O", with_classes("nmos-3v3"))
     low = find(drives, "C1-", "G")
     assert (low.source, low.gate, low.supply) == (

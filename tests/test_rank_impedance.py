@@ -8,17 +8,17 @@ from capmuster.enumerate.converters import converters
 from capmuster.enumerate.errors import CapmusterError
 from capmuster.enumerate.families import dickson, doubler_chain, fibonacci, ladder, series_parallel
 from capmuster.enumerate.wiring import Converter
-from capmuster.rank.circuit import circuit_of
-from capmuster.rank.impedance import (
+from capmuster.rank.exact.circuit import circuit_of
+from capmuster.rank.exact.impedance import (
     blend,
     corner_frequency,
     loop_blend,
     output_impedance,
     regulating_frequency,
 )
-from capmuster.rank.operating import operate
-from capmuster.rank.steadystate import SteadyState
-from capmuster.rank.switching import switch_network
+from capmuster.rank.exact.operating import operate
+from capmuster.rank.exact.steadystate import SteadyState
+from capmuster.rank.scores.switching import switch_network
 
 QUOTIENTS = np.array([0.25, 0.5, 0.7, 1.0, 1.4, 2.0, 4.0])  # R_SSL / R_FSL
 DOUBLER = Converter.parse("I-G/O-I")

@@ -15,10 +15,10 @@ from plain_enumerator import plain_census
 from capmuster.enumerate.errors import CapmusterError
 from capmuster.enumerate.families import members
 from capmuster.enumerate.wiring import Converter
-from capmuster.rank.filters import Filters
-from capmuster.rank.listed import COLUMN_UNITS
-from capmuster.rank.listing import find_converters, list_converters
-from capmuster.rank.utilisation import charge_flow
+from capmuster.rank.scores.filters import Filters
+from capmuster.rank.scores.listed import COLUMN_UNITS
+from capmuster.rank.scores.listing import find_converters, list_converters
+from capmuster.rank.scores.utilisation import charge_flow
 
 
 def rows_of(ratio, capacitors, **options):

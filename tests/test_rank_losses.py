@@ -9,18 +9,18 @@ import pytest
 
 from capmuster.enumerate.converters import table_of
 from capmuster.enumerate.wiring import Converter
-from capmuster.rank.brief import load_brief
-from capmuster.rank.circuit import circuit_of
+from capmuster.rank.design.losses import TERM_FIELDS, TERMS, loss_model, plate_steps
+from capmuster.rank.design.operation import Candidates, Design, operation
 from capmuster.rank.evaluation import choose_elements
-from capmuster.rank.impedance import loop_blend, output_impedance
-from capmuster.rank.losses import TERM_FIELDS, TERMS, loss_model, plate_steps
-from capmuster.rank.networktable import network_table
-from capmuster.rank.operating import operate
-from capmuster.rank.operation import Candidates, Design, operation
+from capmuster.rank.exact.circuit import circuit_of
+from capmuster.rank.exact.impedance import loop_blend, output_impedance
+from capmuster.rank.exact.operating import operate
+from capmuster.rank.exact.steadystate import SteadyState
+from capmuster.rank.inputs.brief import load_brief
+from capmuster.rank.inputs.technology import CapacitorClass, SwitchClass, Technology
+from capmuster.rank.scores.networktable import network_table
+from capmuster.rank.scores.switching import switch_network
 from capmuster.rank.sizing import Losses, impedance, losses
-from capmuster.rank.steadystate import SteadyState
-from capmuster.rank.switching import switch_network
-from capmuster.rank.technology import CapacitorClass, SwitchClass, Technology
 
 CAPACITOR = CapacitorClass(
     name="c", rating=2.5, density=4e-9, plate_fraction=0.02, plate="minus", series_resistance=5e-3,
@@ -140,7 +140,7 @@ def test_the_plate_term_is_what_a_switch_level_steady_state_loses_at_no_load(con
 @pytest.mark.parametrize("converter", CONVERTERS, ids=lambda c: c.code)
 def test_conduction_and_plates_add_up_to_a_switch_level_steady_state(converter, slow_to_fast):
     # The blend errs within known bounds: R_out lies between x coth(x / y), where all loops relax alike, and
-    # x + y (see `capmuster.rank.impedance`). With the exact impedance the sum is that of the steady state.
+    # x + y (see `capmuster.rank.exact.impedance`). With the exact impedance the sum is the steady state's.
     rng = np.random.default_rng(7)
     fraction, current = 1e-5, 3e-3  # plates small enough to settle even far in the fast limit
     one, model, A, S, f = sized(converter, rng, slow_to_fast=slow_to_fast)

@@ -15,17 +15,17 @@ from capmuster import catalogs
 from capmuster.enumerate.converters import table_of
 from capmuster.enumerate.errors import CapmusterError
 from capmuster.enumerate.wiring import Converter
-from capmuster.rank.brief import load_brief
-from capmuster.rank.conditions import LoadPoint
-from capmuster.rank.devicechoice import choose_and_size
+from capmuster.rank.design.devicechoice import choose_and_size
+from capmuster.rank.design.objectives import size_candidates
+from capmuster.rank.design.operation import Candidates, operation
 from capmuster.rank.evaluation import choose_elements
-from capmuster.rank.networktable import network_table
-from capmuster.rank.objectives import size_candidates
-from capmuster.rank.operation import Candidates, operation
+from capmuster.rank.inputs.brief import load_brief
+from capmuster.rank.inputs.conditions import LoadPoint
 from capmuster.rank.pool import gather
+from capmuster.rank.scores.networktable import network_table
+from capmuster.rank.scores.switching import switch_network
 from capmuster.rank.shortlist import shortlist
 from capmuster.rank.sizing import impedance, losses
-from capmuster.rank.switching import switch_network
 
 FIXED = replace(
     load_brief("greenhouse-node"), objective="least-loss", frequency_minimum=2e5, frequency=5e7,

@@ -17,8 +17,8 @@ from hypothesis import strategies as st
 from page_examples import HOSTILE, example
 
 from capmuster.enumerate.converters import converters
-from capmuster.rank.brief import load_brief
-from capmuster.rank.export import export
+from capmuster.rank.files.export import export
+from capmuster.rank.inputs.brief import load_brief
 from capmuster.rank.page.axes import engineering, linear_axis, log_axis
 from capmuster.rank.page.data import BINS, LossBar
 from capmuster.rank.page.plots import SHADES, impedance_plot, loss_plot, population_plot
@@ -26,8 +26,8 @@ from capmuster.rank.page.population import population_of
 from capmuster.rank.page.render import render_page
 from capmuster.rank.page.shortlisted import page_data
 from capmuster.rank.page.tablecells import page_table
+from capmuster.rank.scores.utilisation import charge_flow
 from capmuster.rank.shortlist import shortlist
-from capmuster.rank.utilisation import charge_flow
 
 MEGABYTE = 1_000_000
 

@@ -9,7 +9,7 @@ import pytest
 from page_browser import Opened, open_page, running
 from page_examples import example
 
-from capmuster.rank.brief import load_brief
+from capmuster.rank.inputs.brief import load_brief
 from capmuster.rank.page.shortlisted import page_data
 from capmuster.rank.shortlist import shortlist
 

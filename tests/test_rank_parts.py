@@ -13,10 +13,10 @@ from scipy.interpolate import make_interp_spline
 
 from capmuster import catalogs
 from capmuster.enumerate.errors import CapmusterError
-from capmuster.rank.brief import load_brief
-from capmuster.rank.parts import CapacitorPart, SwitchPart, load_stock
-from capmuster.rank.parts_file import read_capacitors, read_switches
-from capmuster.rank.parts_request import PartsRequest
+from capmuster.rank.inputs.brief import load_brief
+from capmuster.rank.inputs.parts import CapacitorPart, SwitchPart, load_stock
+from capmuster.rank.inputs.parts_file import read_capacitors, read_switches
+from capmuster.rank.inputs.parts_request import PartsRequest
 
 STOCK = load_stock()
 CAPACITORS = {one.name: one for one in STOCK.capacitors}

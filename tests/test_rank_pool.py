@@ -13,10 +13,10 @@ import pytest
 from capmuster.enumerate.converters import converters
 from capmuster.enumerate.families import members, series_parallel
 from capmuster.enumerate.wiring import Cell, Converter
-from capmuster.rank.brief import load_brief
 from capmuster.rank.evaluation import evaluate
+from capmuster.rank.inputs.brief import load_brief
 from capmuster.rank.pool import gather
-from capmuster.rank.switchtable import score
+from capmuster.rank.scores.switchtable import score
 
 FIXED, REGULATED = load_brief("greenhouse-node"), load_brief("greenhouse-node-regulated")
 # Three capacitors keep every case small; nothing here depends on their number.

@@ -11,7 +11,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from capmuster.enumerate.errors import CapmusterError
-from capmuster.rank.quantity import UNITS, format_quantity, parse_quantity, parse_ratio, read_quantity
+from capmuster.rank.inputs.quantity import UNITS, format_quantity, parse_quantity, parse_ratio, read_quantity
 
 # BIPM, "The International System of Units (SI)", 9th edition, table 7.
 SI_PREFIXES = {"f": -15, "p": -12, "n": -9, "u": -6, "µ": -6, "m": -3, "": 0, "k": 3, "M": 6, "G": 9, "T": 12}

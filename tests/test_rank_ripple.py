@@ -12,10 +12,10 @@ from hypothesis import strategies as st
 
 from capmuster.enumerate.converters import converters, table_of
 from capmuster.enumerate.wiring import Converter
-from capmuster.rank.brief import load_brief
-from capmuster.rank.ripple import capacitor_for, excursion, phase_shares
+from capmuster.rank.design.ripple import capacitor_for, excursion, phase_shares
+from capmuster.rank.inputs.brief import load_brief
+from capmuster.rank.scores.utilisation import charge_flow
 from capmuster.rank.shortlist import shortlist
-from capmuster.rank.utilisation import charge_flow
 
 
 def simulated(shares, duty, copies, *, spread):

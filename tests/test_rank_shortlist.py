@@ -12,10 +12,10 @@ import pytest
 from capmuster.enumerate.errors import CapmusterError
 from capmuster.enumerate.families import family_names, series_parallel
 from capmuster.enumerate.wiring import Cell, Converter
-from capmuster.rank.brief import load_brief
-from capmuster.rank.columns import COLUMNS
+from capmuster.rank.files.columns import COLUMNS
+from capmuster.rank.files.summary import assumptions, verdict
+from capmuster.rank.inputs.brief import load_brief
 from capmuster.rank.shortlist import shortlist
-from capmuster.rank.summary import assumptions, verdict
 
 FIXED, REGULATED, BOARD = map(load_brief, ("greenhouse-node", "greenhouse-node-regulated", "pump-shelf"))
 

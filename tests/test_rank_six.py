@@ -13,10 +13,10 @@ from capmuster.enumerate.converters import ratios_of_triple
 from capmuster.enumerate.skeletons import skeletons
 from capmuster.enumerate.tally import Tally, triple_numbers
 from capmuster.enumerate.wiring import Converter
-from capmuster.rank.candidates import candidates_of
-from capmuster.rank.cellscores import score_cells
-from capmuster.rank.switching import switch_network
-from capmuster.rank.utilisation import charge_flow
+from capmuster.rank.scores.candidates import candidates_of
+from capmuster.rank.scores.cellscores import score_cells
+from capmuster.rank.scores.switching import switch_network
+from capmuster.rank.scores.utilisation import charge_flow
 
 # Found by complete enumeration: one wiring for each triple of port charges above F(7) = 21.
 FOUND = {

@@ -5,10 +5,10 @@ import plain_circuit
 import pytest
 
 from capmuster.enumerate.errors import CapmusterError, IllPosedError
-from capmuster.rank.circuit import Capacitor, Circuit, PlateParasitic, Switch
-from capmuster.rank.impedance import output_impedance
-from capmuster.rank.operating import operate
-from capmuster.rank.steadystate import SteadyState
+from capmuster.rank.exact.circuit import Capacitor, Circuit, PlateParasitic, Switch
+from capmuster.rank.exact.impedance import output_impedance
+from capmuster.rank.exact.operating import operate
+from capmuster.rank.exact.steadystate import SteadyState
 
 DECADES = np.logspace(-6, 6, 61)
 

@@ -7,9 +7,9 @@ from fractions import Fraction
 
 import pytest
 
-from capmuster.rank.brief import load_brief
+from capmuster.rank.files.summary import assumptions, verdict
+from capmuster.rank.inputs.brief import load_brief
 from capmuster.rank.shortlist import shortlist
-from capmuster.rank.summary import assumptions, verdict
 
 FIXED, REGULATED = load_brief("greenhouse-node"), load_brief("greenhouse-node-regulated")
 

@@ -16,15 +16,15 @@ from joblib import parallel_config
 
 from capmuster.enumerate.errors import CapmusterError
 from capmuster.enumerate.wiring import Converter
-from capmuster.rank import shards
-from capmuster.rank.candidates import census_candidates
 from capmuster.rank.frontier import frontier
-from capmuster.rank.listing import find_converters
-from capmuster.rank.scoredcensus import silent
-from capmuster.rank.shards import spread
-from capmuster.rank.survey import survey
-from capmuster.rank.surveytable import COLUMNS, best_per_ratio, kept_converters, survey_table
-from capmuster.rank.utilisation import charge_flow
+from capmuster.rank.scores import shards
+from capmuster.rank.scores.candidates import census_candidates
+from capmuster.rank.scores.listing import find_converters
+from capmuster.rank.scores.scoredcensus import silent
+from capmuster.rank.scores.shards import spread
+from capmuster.rank.scores.survey import survey
+from capmuster.rank.scores.surveytable import COLUMNS, best_per_ratio, kept_converters, survey_table
+from capmuster.rank.scores.utilisation import charge_flow
 
 
 @pytest.fixture

@@ -24,7 +24,7 @@ from strategies import census_converters, family_converters, wandered_converters
 from capmuster.enumerate.converters import converters
 from capmuster.enumerate.families import dickson, doubler_chain, fibonacci, ladder, series_parallel
 from capmuster.enumerate.wiring import CONVERTER_PORTS, Converter, vertex_name
-from capmuster.rank.switching import _MOST_ORDERED, _least_carrying, switch_network
+from capmuster.rank.scores.switching import _MOST_ORDERED, _least_carrying, switch_network
 
 ANY = census_converters() | family_converters() | wandered_converters()
 

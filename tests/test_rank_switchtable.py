@@ -10,9 +10,9 @@ from hypothesis import given
 from strategies import census_converters, family_converters
 
 from capmuster.enumerate.converters import converters, table_of
-from capmuster.rank.switching import switch_network
-from capmuster.rank.switchtable import score, switch_table
-from capmuster.rank.utilisation import charge_flow
+from capmuster.rank.scores.switching import switch_network
+from capmuster.rank.scores.switchtable import score, switch_table
+from capmuster.rank.scores.utilisation import charge_flow
 
 
 def held_against_the_network(converter):

@@ -15,7 +15,7 @@ from hypothesis.extra.numpy import array_shapes, arrays
 
 from capmuster import catalogs
 from capmuster.enumerate.errors import CapmusterError
-from capmuster.rank.technology import CapacitorClass, SwitchClass, Technology, load_technology
+from capmuster.rank.inputs.technology import CapacitorClass, SwitchClass, Technology, load_technology
 
 CHIP = load_technology("chip-180nm")
 BOARD = load_technology("board-discrete")

@@ -10,11 +10,11 @@ import pytest
 from scipy.stats import kstest, truncnorm
 
 from capmuster.enumerate.errors import CapmusterError
-from capmuster.rank.brief import load_brief
-from capmuster.rank.conditions import Tolerance
+from capmuster.rank.design.tolerance import corner_draw, random_draw, spreads
+from capmuster.rank.inputs.brief import load_brief
+from capmuster.rank.inputs.conditions import Tolerance
 from capmuster.rank.shortlist import shortlist
 from capmuster.rank.sizing import impedance
-from capmuster.rank.tolerance import corner_draw, random_draw, spreads
 
 NODE = replace(
     load_brief("greenhouse-node"), objective="least-loss", frequency_minimum=1e6, frequency=5e7,

@@ -9,11 +9,11 @@ import pytest
 from scipy.integrate import solve_ivp
 
 from capmuster.enumerate.errors import CapmusterError
-from capmuster.rank.circuit import Capacitor, Circuit, Switch
-from capmuster.rank.exponentials import extremes, mean_square
-from capmuster.rank.operating import operate
-from capmuster.rank.steadystate import SteadyState
-from capmuster.rank.transient import start_up
+from capmuster.rank.exact.circuit import Capacitor, Circuit, Switch
+from capmuster.rank.exact.exponentials import extremes, mean_square
+from capmuster.rank.exact.operating import operate
+from capmuster.rank.exact.steadystate import SteadyState
+from capmuster.rank.exact.transient import start_up
 
 DOUBLER = Circuit(
     ("G", "I", "O", "p", "m"),

@@ -17,8 +17,8 @@ from capmuster.enumerate.converters import converters
 from capmuster.enumerate.errors import IllPosedError
 from capmuster.enumerate.families import dickson, fibonacci, ladder, series_parallel
 from capmuster.enumerate.wiring import Converter
-from capmuster.rank.switchtable import score
-from capmuster.rank.utilisation import charge_flow, lifted_energy
+from capmuster.rank.scores.switchtable import score
+from capmuster.rank.scores.utilisation import charge_flow, lifted_energy
 
 ANY = census_converters() | family_converters(most=20) | wandered_converters()
 

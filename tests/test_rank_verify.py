@@ -9,11 +9,11 @@ import pytest
 from click.testing import CliRunner
 
 from capmuster.enumerate.errors import CapmusterError
-from capmuster.rank import simulate as simulating
-from capmuster.rank import verification
 from capmuster.rank.commands import deck, verify
-from capmuster.rank.subject import UNEQUAL, Values, subjects
-from capmuster.rank.verification import Comparison
+from capmuster.rank.exact import simulate as simulating
+from capmuster.rank.exact import verification
+from capmuster.rank.exact.subject import UNEQUAL, Values, subjects
+from capmuster.rank.exact.verification import Comparison
 
 TRIPLER = "I-G/a-I I-G/O-a"
 

@@ -9,8 +9,8 @@ from dataclasses import replace
 import openpyxl
 import pytest
 
-from capmuster.rank.brief import load_brief
-from capmuster.rank.export_workbook import to_workbook
+from capmuster.rank.files.export_workbook import to_workbook
+from capmuster.rank.inputs.brief import load_brief
 from capmuster.rank.shortlist import shortlist
 
 

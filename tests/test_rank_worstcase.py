@@ -9,15 +9,15 @@ import pytest
 
 from capmuster.enumerate.converters import converters, table_of
 from capmuster.enumerate.wiring import Converter
-from capmuster.rank.brief import load_brief
-from capmuster.rank.circuit import circuit_of
 from capmuster.rank.elements import elements_of, network_table
 from capmuster.rank.evaluation import evaluate
-from capmuster.rank.operating import operate
-from capmuster.rank.steadystate import SteadyState
-from capmuster.rank.switching import switch_network
-from capmuster.rank.switchtable import score, switch_table
-from capmuster.rank.technology import load_technology
+from capmuster.rank.exact.circuit import circuit_of
+from capmuster.rank.exact.operating import operate
+from capmuster.rank.exact.steadystate import SteadyState
+from capmuster.rank.inputs.brief import load_brief
+from capmuster.rank.inputs.technology import load_technology
+from capmuster.rank.scores.switching import switch_network
+from capmuster.rank.scores.switchtable import score, switch_table
 from capmuster.rank.worstcase import ratings
 
 REGULATED = load_brief("greenhouse-node-regulated")

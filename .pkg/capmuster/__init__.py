@@ -18,18 +18,18 @@ from capmuster.rank._version import __version__
 if TYPE_CHECKING:
     from capmuster.enumerate.errors import CapmusterError
     from capmuster.enumerate.wiring import Cell, Converter
-    from capmuster.rank.brief import Brief, load_brief
-    from capmuster.rank.counting import count_census
-    from capmuster.rank.detail import detail
     from capmuster.rank.discrete.choose import choose_parts
-    from capmuster.rank.export import export
-    from capmuster.rank.listing import list_converters
+    from capmuster.rank.files.export import export
+    from capmuster.rank.inputs.brief import Brief, load_brief
+    from capmuster.rank.inputs.parts import load_stock
+    from capmuster.rank.inputs.parts_request import PartsRequest
+    from capmuster.rank.inputs.technology import Technology, load_technology
     from capmuster.rank.lookup import find_converter
-    from capmuster.rank.parts import load_stock
-    from capmuster.rank.parts_request import PartsRequest
+    from capmuster.rank.scores.counting import count_census
+    from capmuster.rank.scores.detail import detail
+    from capmuster.rank.scores.listing import list_converters
+    from capmuster.rank.scores.utilisation import charge_flow
     from capmuster.rank.shortlist import Shortlist, shortlist
-    from capmuster.rank.technology import Technology, load_technology
-    from capmuster.rank.utilisation import charge_flow
 
 __all__ = [
     "Brief",
@@ -54,23 +54,23 @@ __all__ = [
 ]
 
 _HOME = {
-    "Brief": "capmuster.rank.brief",
+    "Brief": "capmuster.rank.inputs.brief",
     "CapmusterError": "capmuster.enumerate.errors",
     "Cell": "capmuster.enumerate.wiring",
     "Converter": "capmuster.enumerate.wiring",
-    "PartsRequest": "capmuster.rank.parts_request",
+    "PartsRequest": "capmuster.rank.inputs.parts_request",
     "Shortlist": "capmuster.rank.shortlist",
-    "Technology": "capmuster.rank.technology",
-    "charge_flow": "capmuster.rank.utilisation",
+    "Technology": "capmuster.rank.inputs.technology",
+    "charge_flow": "capmuster.rank.scores.utilisation",
     "choose_parts": "capmuster.rank.discrete.choose",
-    "count_census": "capmuster.rank.counting",
-    "detail": "capmuster.rank.detail",
-    "export": "capmuster.rank.export",
+    "count_census": "capmuster.rank.scores.counting",
+    "detail": "capmuster.rank.scores.detail",
+    "export": "capmuster.rank.files.export",
     "find_converter": "capmuster.rank.lookup",
-    "list_converters": "capmuster.rank.listing",
-    "load_brief": "capmuster.rank.brief",
-    "load_stock": "capmuster.rank.parts",
-    "load_technology": "capmuster.rank.technology",
+    "list_converters": "capmuster.rank.scores.listing",
+    "load_brief": "capmuster.rank.inputs.brief",
+    "load_stock": "capmuster.rank.inputs.parts",
+    "load_technology": "capmuster.rank.inputs.technology",
     "shortlist": "capmuster.rank.shortlist",
 }
 

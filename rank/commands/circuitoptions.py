@@ -9,8 +9,8 @@ import click
 if TYPE_CHECKING:
     from collections.abc import Callable
 
-    from capmuster.rank.quantity import Sign, Unit
-    from capmuster.rank.subject import Values
+    from capmuster.rank.exact.subject import Values
+    from capmuster.rank.inputs.quantity import Sign, Unit
 
 _OPTIONS = (
     click.option(
@@ -68,8 +68,8 @@ def read_values(options: dict[str, str | None]) -> Values:
     CapmusterError
         A text is no quantity of the option's unit.
     """
-    from capmuster.rank.quantity import read_quantity  # noqa: PLC0415 -- nothing heavy before it is needed
-    from capmuster.rank.subject import Values  # noqa: PLC0415
+    from capmuster.rank.exact.subject import Values  # noqa: PLC0415
+    from capmuster.rank.inputs.quantity import read_quantity  # noqa: PLC0415 -- nothing heavy before it is needed
 
     def several(name: str, unit: Unit) -> tuple[float, ...]:
         text = options[name]

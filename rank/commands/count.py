@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 import click
 
 if TYPE_CHECKING:
-    from capmuster.rank.counting import CensusCount
+    from capmuster.rank.scores.counting import CensusCount
 
 
 @click.command(name="count", epilog="\b\nExample:\n  capmuster count 4")
@@ -30,8 +30,8 @@ def command(capacitors: int, jobs: int, form: str) -> None:
     the skeletons are counted apart by a generator of their own. Exit status 1 when any two numbers differ.
     Up to six capacitors; six are some four hundred million cells, listed in passing and not kept.
     """
-    from capmuster.rank.counting import count_census  # noqa: PLC0415 -- nothing heavy before it is needed
     from capmuster.rank.progress import told  # noqa: PLC0415
+    from capmuster.rank.scores.counting import count_census  # noqa: PLC0415 -- nothing heavy before it is needed
 
     with told() as say:
         counted = count_census(capacitors, jobs=jobs, say=say)
@@ -59,7 +59,7 @@ def _per_triple(counted: CensusCount) -> list[list[str]]:
 
 
 def _write_json(counted: CensusCount) -> None:
-    from capmuster.rank.rows import json_text  # noqa: PLC0415
+    from capmuster.rank.files.rows import json_text  # noqa: PLC0415
 
     click.echo(
         json_text(
@@ -78,7 +78,7 @@ def _write_json(counted: CensusCount) -> None:
 
 
 def _write_csv(counted: CensusCount) -> None:
-    from capmuster.rank.rows import csv_text  # noqa: PLC0415
+    from capmuster.rank.files.rows import csv_text  # noqa: PLC0415
 
     click.echo(
         csv_text(["triple", "cells", "labelled_listed", "labelled_counted"], _per_triple(counted)), nl=False
@@ -86,7 +86,7 @@ def _write_csv(counted: CensusCount) -> None:
 
 
 def _write_table(counted: CensusCount) -> None:
-    from capmuster.rank.rows import text_table  # noqa: PLC0415
+    from capmuster.rank.files.rows import text_table  # noqa: PLC0415
 
     rows = _per_triple(counted)
     total = ["all", str(counted.cells), str(counted.labelled_listed), str(counted.labelled_counted)]

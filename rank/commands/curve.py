@@ -10,7 +10,7 @@ import click
 from capmuster.rank.commands.circuitoptions import circuit_options, read_values
 
 if TYPE_CHECKING:
-    from capmuster.rank.curve import Curve, Sweep
+    from capmuster.rank.exact.curve import Curve, Sweep
 
 _SHOWN = 13
 
@@ -61,10 +61,10 @@ def command(
     Without values a wiring has 1 uF capacitors and 100 mohm switches. A brief stands for its best finalist as
     sized. Efficiency counts conduction and plate parasitics, no gate drive.
     """
-    from capmuster.rank.curve import curve  # noqa: PLC0415 -- nothing heavy before it is needed
-    from capmuster.rank.curvefiles import check_targets, write  # noqa: PLC0415
-    from capmuster.rank.quantity import read_quantity  # noqa: PLC0415
-    from capmuster.rank.subject import subjects  # noqa: PLC0415
+    from capmuster.rank.exact.curve import curve  # noqa: PLC0415 -- nothing heavy before it is needed
+    from capmuster.rank.exact.curvefiles import check_targets, write  # noqa: PLC0415
+    from capmuster.rank.exact.subject import subjects  # noqa: PLC0415
+    from capmuster.rank.inputs.quantity import read_quantity  # noqa: PLC0415
 
     files = [Path(target) for target in targets]
     check_targets(files)
@@ -77,7 +77,7 @@ def command(
     if form == "json":
         _write_json(whole)
     elif form == "csv":
-        from capmuster.rank.curvefiles import to_csv  # noqa: PLC0415
+        from capmuster.rank.exact.curvefiles import to_csv  # noqa: PLC0415
 
         click.echo(to_csv(whole).decode(), nl=False)
     else:
@@ -88,8 +88,8 @@ def command(
 
 
 def _write_json(found: Curve) -> None:
-    from capmuster.rank.curve import HEADER  # noqa: PLC0415
-    from capmuster.rank.rows import json_text  # noqa: PLC0415
+    from capmuster.rank.exact.curve import HEADER  # noqa: PLC0415
+    from capmuster.rank.files.rows import json_text  # noqa: PLC0415
 
     rows = [
         {name: _plain(name, cell) for name, cell in zip(HEADER, row, strict=True)} for row in found.rows()
@@ -114,8 +114,8 @@ def _plain(name: str, cell: str) -> str | float | None:
 
 
 def _write_table(found: Curve) -> None:
-    from capmuster.rank.quantity import format_quantity  # noqa: PLC0415
-    from capmuster.rank.rows import text_table  # noqa: PLC0415
+    from capmuster.rank.files.rows import text_table  # noqa: PLC0415
+    from capmuster.rank.inputs.quantity import format_quantity  # noqa: PLC0415
 
     subject = found.subject
     click.echo(f"{subject.converter.id}   {subject.converter.code}   {subject.title}".rstrip() + "\n")

@@ -29,9 +29,9 @@ def command(*, subject: str, place: int, target: str | None, **options: str | No
     no-load ratio, output resistance, efficiency and the peak voltage of each switch. Without values a wiring
     has 1 uF capacitors and 100 mohm switches; a brief stands for a finalist as sized.
     """
-    from capmuster.rank.deck import subject_deck  # noqa: PLC0415 -- nothing heavy before it is needed
-    from capmuster.rank.export import check_writable, write_all  # noqa: PLC0415
-    from capmuster.rank.subject import subjects  # noqa: PLC0415
+    from capmuster.rank.exact.deck import subject_deck  # noqa: PLC0415 -- nothing heavy before it is needed
+    from capmuster.rank.exact.subject import subjects  # noqa: PLC0415
+    from capmuster.rank.files.export import check_writable, write_all  # noqa: PLC0415
 
     if target is not None:
         check_writable(Path(target))

@@ -30,8 +30,8 @@ def command(*, converter: str, targets: tuple[str, ...], input_voltage: str | No
     from capmuster.enumerate.families import family_names  # noqa: PLC0415 -- nothing heavy before it is needed
     from capmuster.rank.drawing.files import check_targets, write_drawings  # noqa: PLC0415
     from capmuster.rank.drawing.sheet import converter_sheet  # noqa: PLC0415
+    from capmuster.rank.inputs.quantity import read_quantity  # noqa: PLC0415
     from capmuster.rank.lookup import find_converter  # noqa: PLC0415
-    from capmuster.rank.quantity import read_quantity  # noqa: PLC0415
 
     check_targets(targets)
     volts = None if input_voltage is None else read_quantity("--input-voltage", input_voltage, "V")

@@ -32,8 +32,8 @@ def command(brief: str, paths: tuple[str, ...], top: int, include: tuple[str, ..
     BRIEF is the name of a shipped brief or a TOML file. Either every file is written or none.
     """
     from capmuster.rank.commands.ranking import ranked  # noqa: PLC0415 -- nothing heavy before it is needed
-    from capmuster.rank.export import check_targets, export  # noqa: PLC0415
-    from capmuster.rank.summary import verdict  # noqa: PLC0415
+    from capmuster.rank.files.export import check_targets, export  # noqa: PLC0415
+    from capmuster.rank.files.summary import verdict  # noqa: PLC0415
 
     check_targets(paths)
     found = ranked(brief, top, include)

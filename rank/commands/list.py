@@ -7,8 +7,8 @@ from typing import TYPE_CHECKING
 import click
 
 if TYPE_CHECKING:
-    from capmuster.rank.listed import Listed
-    from capmuster.rank.listing import Listing
+    from capmuster.rank.scores.listed import Listed
+    from capmuster.rank.scores.listing import Listing
 
 _SHOWN = 25
 
@@ -94,10 +94,10 @@ def command(
     The census of five capacitors is built once and kept in the user's cache folder; the environment variable
     CAPMUSTER_CACHE names another one.
     """
-    from capmuster.rank.filters import Filters  # noqa: PLC0415 -- nothing heavy before it is needed
-    from capmuster.rank.listing import find_converters  # noqa: PLC0415
+    from capmuster.rank.inputs.quantity import parse_ratio  # noqa: PLC0415
     from capmuster.rank.progress import told  # noqa: PLC0415
-    from capmuster.rank.quantity import parse_ratio  # noqa: PLC0415
+    from capmuster.rank.scores.filters import Filters  # noqa: PLC0415 -- nothing heavy before it is needed
+    from capmuster.rank.scores.listing import find_converters  # noqa: PLC0415
 
     filters = Filters(
         switches=switches,
@@ -127,7 +127,7 @@ def command(
 
 
 def _write_json(listing: Listing) -> None:
-    from capmuster.rank.rows import Json, json_text  # noqa: PLC0415
+    from capmuster.rank.files.rows import Json, json_text  # noqa: PLC0415
 
     content: dict[str, Json] = {
         "ratio": str(listing.ratio),
@@ -156,7 +156,7 @@ def _write_json(listing: Listing) -> None:
 
 
 def _write_csv(listing: Listing) -> None:
-    from capmuster.rank.rows import csv_text  # noqa: PLC0415
+    from capmuster.rank.files.rows import csv_text  # noqa: PLC0415
 
     header = [
         "id",
@@ -187,7 +187,7 @@ def _write_csv(listing: Listing) -> None:
 
 
 def _write_table(listing: Listing) -> None:
-    from capmuster.rank.rows import text_table  # noqa: PLC0415
+    from capmuster.rank.files.rows import text_table  # noqa: PLC0415
 
     if listing.nearest:
         click.echo(_out_of_reach(listing))

@@ -7,10 +7,10 @@ from typing import TYPE_CHECKING
 import click
 
 if TYPE_CHECKING:
-    from capmuster.rank.brief import Brief
     from capmuster.rank.discrete.finalists import PartsShortlist
-    from capmuster.rank.parts_request import PartsRequest
-    from capmuster.rank.quantity import Sign, Unit
+    from capmuster.rank.inputs.brief import Brief
+    from capmuster.rank.inputs.parts_request import PartsRequest
+    from capmuster.rank.inputs.quantity import Sign, Unit
 
 _IN_TERMINAL = (
     "place", "id", "ratio", "families", "flying_capacitors", "switches", "parts", "footprint_mm2",
@@ -70,8 +70,8 @@ def command(
     capacitor and switch are chosen together, from the catalogs that its table [parts] names; options here
     come before that table.
     """
-    from capmuster.rank.brief import load_brief  # noqa: PLC0415 -- nothing heavy before it is needed
     from capmuster.rank.discrete.choose import choose_parts  # noqa: PLC0415
+    from capmuster.rank.inputs.brief import load_brief  # noqa: PLC0415 -- nothing heavy before it is needed
     from capmuster.rank.lookup import find_converter  # noqa: PLC0415
 
     if paths:
@@ -88,7 +88,7 @@ def command(
         click.echo("\n".join([found.certificate, *(f"Written: {path}" for path in paths)]))
     elif form == "json":
         from capmuster.rank.discrete.report import document  # noqa: PLC0415
-        from capmuster.rank.rows import json_text  # noqa: PLC0415
+        from capmuster.rank.files.rows import json_text  # noqa: PLC0415
 
         click.echo(json_text(document(found)))  # type: ignore[arg-type]  # plain content all the way down
     elif form == "csv":
@@ -100,8 +100,8 @@ def command(
 def _request(job: Brief) -> PartsRequest:
     """Return what the brief asks of the parts, or plain settings where a board's brief says nothing."""
     from capmuster.enumerate.errors import CapmusterError  # noqa: PLC0415
-    from capmuster.rank.parts import load_stock  # noqa: PLC0415
-    from capmuster.rank.parts_request import PartsRequest  # noqa: PLC0415
+    from capmuster.rank.inputs.parts import load_stock  # noqa: PLC0415
+    from capmuster.rank.inputs.parts_request import PartsRequest  # noqa: PLC0415
 
     if job.parts is not None:
         return job.parts
@@ -117,7 +117,7 @@ def _changed(request: PartsRequest, changes: dict[str, object]) -> PartsRequest:
     """Put the options that were given in place of what the brief says."""
     from dataclasses import replace  # noqa: PLC0415
 
-    from capmuster.rank.quantity import read_quantity  # noqa: PLC0415
+    from capmuster.rank.inputs.quantity import read_quantity  # noqa: PLC0415
 
     units: dict[str, Unit] = {
         "footprint": "mm2",
@@ -170,9 +170,9 @@ def _write_table(found: PartsShortlist) -> None:
         candidate_rows,
         settings,
     )
-    from capmuster.rank.export_text import cell, heading  # noqa: PLC0415
-    from capmuster.rank.quantity import format_quantity  # noqa: PLC0415
-    from capmuster.rank.rows import text_table  # noqa: PLC0415
+    from capmuster.rank.files.export_text import cell, heading  # noqa: PLC0415
+    from capmuster.rank.files.rows import text_table  # noqa: PLC0415
+    from capmuster.rank.inputs.quantity import format_quantity  # noqa: PLC0415
 
     for name, value in settings(found):
         click.echo(f"{name:18} {value}")

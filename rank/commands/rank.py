@@ -10,7 +10,7 @@ import click
 if TYPE_CHECKING:
     from collections.abc import Mapping, Sequence
 
-    from capmuster.rank.brief import Brief
+    from capmuster.rank.inputs.brief import Brief
     from capmuster.rank.shortlist import Shortlist
 
 # The columns of the table and their headings: short, so that it fits a terminal.
@@ -129,11 +129,11 @@ def command(*, brief: str, top: int, include: tuple[str, ...], columns: str | No
     shown = None if columns is None else _chosen(brief, columns, form)
     found = ranked(brief, top, include)
     if form == "json":
-        from capmuster.rank.export_text import to_json  # noqa: PLC0415
+        from capmuster.rank.files.export_text import to_json  # noqa: PLC0415
 
         click.echo(to_json(found).decode(), nl=False)
     elif form == "csv":
-        from capmuster.rank.export_text import to_csv  # noqa: PLC0415
+        from capmuster.rank.files.export_text import to_csv  # noqa: PLC0415
 
         click.echo(to_csv(found, shown).decode(), nl=False)
     else:
@@ -143,8 +143,8 @@ def command(*, brief: str, top: int, include: tuple[str, ...], columns: str | No
 def _chosen(brief: str, columns: str, form: str) -> list[str]:
     """Read names of columns, before any work is done."""
     from capmuster.enumerate.errors import CapmusterError  # noqa: PLC0415
-    from capmuster.rank.brief import load_brief  # noqa: PLC0415
-    from capmuster.rank.columns import columns_of  # noqa: PLC0415
+    from capmuster.rank.files.columns import columns_of  # noqa: PLC0415
+    from capmuster.rank.inputs.brief import load_brief  # noqa: PLC0415
 
     if form == "json":
         raise CapmusterError("columns: JSON holds them all", accepted="--columns with a table or CSV")
@@ -159,13 +159,13 @@ def _chosen(brief: str, columns: str, form: str) -> list[str]:
 
 
 def _write_table(found: Shortlist, shown: list[str] | None) -> None:
-    from capmuster.rank.summary import assumptions, verdict  # noqa: PLC0415
+    from capmuster.rank.files.summary import assumptions, verdict  # noqa: PLC0415
 
     for name, value in assumptions(found.brief):
         click.echo(f"{name:20} {value}")
     click.echo()
     if len(found) and shown is not None:
-        from capmuster.rank.export_text import heading  # noqa: PLC0415
+        from capmuster.rank.files.export_text import heading  # noqa: PLC0415
 
         headings = {column.name: heading(column) for column in found.columns}
         click.echo(_table(found, {name: headings[name] for name in shown}, groups=()))
@@ -194,8 +194,8 @@ def _shown(brief: Brief) -> dict[str, str]:
 def _table(
     found: Shortlist, headings: Mapping[str, str], groups: Sequence[tuple[str, str, str]] = _GROUPS
 ) -> str:
-    from capmuster.rank.export_text import cell  # noqa: PLC0415
-    from capmuster.rank.rows import figures, prefixed, text_table  # noqa: PLC0415
+    from capmuster.rank.files.export_text import cell  # noqa: PLC0415
+    from capmuster.rank.files.rows import figures, prefixed, text_table  # noqa: PLC0415
 
     shown = dict(headings)
     names = list(shown)

@@ -20,7 +20,7 @@ def ranked(brief: str, top: int, include: Sequence[str]) -> Shortlist:
         When the brief, the number or an included wiring is refused.
     """
     from capmuster.enumerate.errors import CapmusterError  # noqa: PLC0415 -- nothing before it is needed
-    from capmuster.rank.brief import load_brief  # noqa: PLC0415
+    from capmuster.rank.inputs.brief import load_brief  # noqa: PLC0415
     from capmuster.rank.lookup import find_converter  # noqa: PLC0415
     from capmuster.rank.shortlist import shortlist  # noqa: PLC0415
 

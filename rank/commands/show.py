@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 import click
 
 if TYPE_CHECKING:
-    from capmuster.rank.detail import Detail
+    from capmuster.rank.scores.detail import Detail
 
 
 @click.command(name="show", epilog="\b\nExamples:\n  capmuster show 'I-G/a-I I-G/O-a'\n  capmuster show 1-0h")
@@ -27,16 +27,16 @@ def command(converter: str, form: str) -> None:
     capacitor, plus-minus/plus-minus: where its plates sit in phase 1 and in phase 2. G, I, O are ground,
     input and output; lower-case names are internal nodes of their phase.
     """
-    from capmuster.rank.detail import detail  # noqa: PLC0415 -- nothing heavy before it is needed
     from capmuster.rank.lookup import find_converter  # noqa: PLC0415
+    from capmuster.rank.scores.detail import detail  # noqa: PLC0415 -- nothing heavy before it is needed
 
     found = detail(find_converter(converter))
     if form == "json":
-        from capmuster.rank.rows import json_text  # noqa: PLC0415
+        from capmuster.rank.files.rows import json_text  # noqa: PLC0415
 
         click.echo(json_text(found.as_json()))
     elif form == "csv":
-        from capmuster.rank.rows import csv_text  # noqa: PLC0415
+        from capmuster.rank.files.rows import csv_text  # noqa: PLC0415
 
         click.echo(csv_text(found.HEADER, found.rows()), nl=False)
     else:
@@ -45,7 +45,7 @@ def command(converter: str, form: str) -> None:
 
 def _write_table(found: Detail) -> None:
     from capmuster.rank.drawing.terminal import terminal_diagram  # noqa: PLC0415
-    from capmuster.rank.rows import text_table  # noqa: PLC0415
+    from capmuster.rank.files.rows import text_table  # noqa: PLC0415
 
     click.echo(f"{found.converter.id}   {found.converter.code}\n")
     click.echo(terminal_diagram(found.converter) + "\n")

@@ -10,10 +10,10 @@ if TYPE_CHECKING:
     from collections.abc import Sequence
     from fractions import Fraction
 
-    from capmuster.rank.keeping import Score
-    from capmuster.rank.listed import Listed
-    from capmuster.rank.rows import Json
-    from capmuster.rank.survey import Survey
+    from capmuster.rank.files.rows import Json
+    from capmuster.rank.scores.keeping import Score
+    from capmuster.rank.scores.listed import Listed
+    from capmuster.rank.scores.survey import Survey
 
 
 @click.command(
@@ -63,10 +63,10 @@ def command(
     Six capacitors have some four hundred million cells: none is stored, an interrupted survey goes on where
     it stopped, and a finished one is kept and answers at once. The counts are certified as by count.
     """
+    from capmuster.rank.inputs.quantity import parse_ratio  # noqa: PLC0415
     from capmuster.rank.progress import told  # noqa: PLC0415 -- nothing heavy before it is needed
-    from capmuster.rank.quantity import parse_ratio  # noqa: PLC0415
-    from capmuster.rank.shards import spread  # noqa: PLC0415
-    from capmuster.rank.survey import survey  # noqa: PLC0415
+    from capmuster.rank.scores.shards import spread  # noqa: PLC0415
+    from capmuster.rank.scores.survey import survey  # noqa: PLC0415
 
     wanted = None if ratio is None else parse_ratio(ratio)
     with told() as say, spread(scheduler):
@@ -89,8 +89,8 @@ def _jobs(capacitors: int, jobs: int | None, scheduler: str | None) -> int | Non
 
 
 def _write_json(found: Survey, ratios: Sequence[Fraction]) -> None:
-    from capmuster.rank.rows import json_text  # noqa: PLC0415
-    from capmuster.rank.surveytable import kept_converters  # noqa: PLC0415
+    from capmuster.rank.files.rows import json_text  # noqa: PLC0415
+    from capmuster.rank.scores.surveytable import kept_converters  # noqa: PLC0415
 
     content: list[Json] = []
     for ratio in ratios:
@@ -120,8 +120,8 @@ def _json_row(row: Listed) -> Json:
 
 
 def _write_ratios(found: Survey, form: str) -> None:
-    from capmuster.rank.rows import csv_text, text_table  # noqa: PLC0415
-    from capmuster.rank.surveytable import COLUMNS, best_per_ratio  # noqa: PLC0415
+    from capmuster.rank.files.rows import csv_text, text_table  # noqa: PLC0415
+    from capmuster.rank.scores.surveytable import COLUMNS, best_per_ratio  # noqa: PLC0415
 
     rows = best_per_ratio(found)
     if form == "csv":
@@ -139,8 +139,8 @@ def _write_ratios(found: Survey, form: str) -> None:
 
 
 def _write_converters(found: Survey, ratio: Fraction, form: str) -> None:
-    from capmuster.rank.rows import csv_text, text_table  # noqa: PLC0415
-    from capmuster.rank.surveytable import kept_converters  # noqa: PLC0415
+    from capmuster.rank.files.rows import csv_text, text_table  # noqa: PLC0415
+    from capmuster.rank.scores.surveytable import kept_converters  # noqa: PLC0415
 
     best, frontier = (kept_converters(found, ratio, which) for which in ("best", "frontier"))
     on_frontier, among_best = {row.id for row in frontier}, {row.id for row in best}

@@ -9,8 +9,8 @@ import click
 from capmuster.rank.commands.circuitoptions import circuit_options, read_values
 
 if TYPE_CHECKING:
-    from capmuster.rank.subject import Subject
-    from capmuster.rank.verification import Comparison
+    from capmuster.rank.exact.subject import Subject
+    from capmuster.rank.exact.verification import Comparison
 
 _HEADER = ["id", "quantity", "exact", "simulated", "difference"]
 
@@ -42,14 +42,14 @@ def command(*, subject: str, top: int, form: str, **options: str | None) -> None
     fault. Exit status 1 when any two values differ by more than 0.1 %; peaks are compared on the scale
     of the input voltage.
     """
-    from capmuster.rank.subject import subjects  # noqa: PLC0415 -- nothing heavy before it is needed
-    from capmuster.rank.verification import TOLERANCE, verify  # noqa: PLC0415
+    from capmuster.rank.exact.subject import subjects  # noqa: PLC0415 -- nothing heavy before it is needed
+    from capmuster.rank.exact.verification import TOLERANCE, verify  # noqa: PLC0415
 
     results = [(one, verify(one)) for one in subjects(subject, read_values(options), top=top, unequal=True)]
     if form == "json":
         _write_json(results)
     elif form == "csv":
-        from capmuster.rank.rows import csv_text  # noqa: PLC0415
+        from capmuster.rank.files.rows import csv_text  # noqa: PLC0415
 
         click.echo(csv_text(_HEADER, [row for one, rows in results for row in _plain(one, rows)]), nl=False)
     else:
@@ -71,7 +71,7 @@ def _plain(subject: Subject, rows: tuple[Comparison, ...]) -> list[list[str]]:
 
 
 def _write_json(results: list[tuple[Subject, tuple[Comparison, ...]]]) -> None:
-    from capmuster.rank.rows import json_text  # noqa: PLC0415
+    from capmuster.rank.files.rows import json_text  # noqa: PLC0415
 
     click.echo(
         json_text(
@@ -100,8 +100,8 @@ def _write_json(results: list[tuple[Subject, tuple[Comparison, ...]]]) -> None:
 
 
 def _write_table(subject: Subject, rows: tuple[Comparison, ...]) -> None:
-    from capmuster.rank.quantity import format_quantity  # noqa: PLC0415
-    from capmuster.rank.rows import text_table  # noqa: PLC0415
+    from capmuster.rank.files.rows import text_table  # noqa: PLC0415
+    from capmuster.rank.inputs.quantity import format_quantity  # noqa: PLC0415
 
     def shown(row: Comparison, value: float) -> str:
         if row.quantity == "no-load ratio":

@@ -15,7 +15,7 @@ from typing import TYPE_CHECKING, Final
 
 import numpy as np
 
-from capmuster.rank.impedance import blend, loop_blend
+from capmuster.rank.exact.impedance import blend, loop_blend
 
 if TYPE_CHECKING:
     from collections.abc import Callable

@@ -17,7 +17,7 @@ import numpy as np
 from capmuster.rank.discrete.options import lowered
 from capmuster.rank.discrete.problem import SLACK, frame_of, operating_input, phase_factors, reported
 from capmuster.rank.discrete.relaxed import tangents
-from capmuster.rank.switchtable import switch_table
+from capmuster.rank.scores.switchtable import switch_table
 from capmuster.rank.worstcase import ratings
 
 if TYPE_CHECKING:
@@ -26,11 +26,11 @@ if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from capmuster.enumerate.converters import ConverterTable
-    from capmuster.rank.brief import Brief
     from capmuster.rank.discrete.blends import Blend
     from capmuster.rank.discrete.options import Kind, OptionBook
     from capmuster.rank.discrete.problem import Problem
     from capmuster.rank.discrete.relaxed import Multipliers
+    from capmuster.rank.inputs.brief import Brief
     from capmuster.rank.pool import Pool
 
     Floats = NDArray[np.float64]

@@ -32,14 +32,14 @@ if TYPE_CHECKING:
     from collections.abc import Sequence
 
     from capmuster.enumerate.wiring import Converter
-    from capmuster.rank.brief import Brief
     from capmuster.rank.discrete.blends import Blend
     from capmuster.rank.discrete.design import Condition
     from capmuster.rank.discrete.labels import Outcome
     from capmuster.rank.discrete.problem import Problem
     from capmuster.rank.discrete.relaxed import Relaxed
     from capmuster.rank.discrete.slots import Slot
-    from capmuster.rank.parts_request import PartsRequest
+    from capmuster.rank.inputs.brief import Brief
+    from capmuster.rank.inputs.parts_request import PartsRequest
     from capmuster.rank.pool import Pool
 
 _SEEDS: Final = 16  # candidates, each of another ratio, whose multipliers bound all others at first

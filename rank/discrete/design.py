@@ -10,19 +10,19 @@ from dataclasses import dataclass, fields
 from typing import TYPE_CHECKING, Final
 
 from capmuster.rank.discrete.problem import fast_factor
-from capmuster.rank.parts import CapacitorPart
+from capmuster.rank.inputs.parts import CapacitorPart
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
 
     from capmuster.enumerate.wiring import Converter
-    from capmuster.rank.brief import Brief
     from capmuster.rank.discrete.blends import Blend
     from capmuster.rank.discrete.options import OptionBook
     from capmuster.rank.discrete.problem import Problem, Selection
     from capmuster.rank.discrete.slots import Slot
-    from capmuster.rank.parts import SwitchPart
-    from capmuster.rank.parts_request import PartsRequest
+    from capmuster.rank.inputs.brief import Brief
+    from capmuster.rank.inputs.parts import SwitchPart
+    from capmuster.rank.inputs.parts_request import PartsRequest
 
 _HALF: Final = 0.5
 
@@ -312,8 +312,8 @@ def exact_impedance(
     fillings, brief, request, frequency, input_voltage
         As in `condition`.
     """
-    from capmuster.rank.circuit import circuit_of  # noqa: PLC0415 -- only for finalists
-    from capmuster.rank.impedance import output_impedance  # noqa: PLC0415
+    from capmuster.rank.exact.circuit import circuit_of  # noqa: PLC0415 -- only for finalists
+    from capmuster.rank.exact.impedance import output_impedance  # noqa: PLC0415
 
     values = [one.value(request, input_voltage) for one in fillings]
     series = [

@@ -18,9 +18,9 @@ from capmuster.rank.discrete.report import (
     provenance,
     settings,
 )
-from capmuster.rank.export import check_writable, write_all
-from capmuster.rank.export_text import heading
-from capmuster.rank.rows import csv_text
+from capmuster.rank.files.export import check_writable, write_all
+from capmuster.rank.files.export_text import heading
+from capmuster.rank.files.rows import csv_text
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
@@ -29,9 +29,9 @@ if TYPE_CHECKING:
     from xlsxwriter.workbook import Workbook
     from xlsxwriter.worksheet import Worksheet
 
-    from capmuster.rank.columns import Column
     from capmuster.rank.discrete.finalists import PartsShortlist
     from capmuster.rank.discrete.report import Row
+    from capmuster.rank.files.columns import Column
 
 SUFFIXES = (".csv", ".json", ".xlsx")
 """Kinds of file that finalists can be written to."""

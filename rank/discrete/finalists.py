@@ -6,15 +6,15 @@ import math
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
-from capmuster.rank.cautions import cautions
-from capmuster.rank.quantity import format_quantity
+from capmuster.rank.inputs.cautions import cautions
+from capmuster.rank.inputs.quantity import format_quantity
 
 if TYPE_CHECKING:
     from capmuster.enumerate.wiring import Converter
-    from capmuster.rank.brief import Brief
     from capmuster.rank.discrete.blends import Blend
     from capmuster.rank.discrete.design import Condition, Filling
-    from capmuster.rank.parts_request import PartsRequest
+    from capmuster.rank.inputs.brief import Brief
+    from capmuster.rank.inputs.parts_request import PartsRequest
 
 
 @dataclass(frozen=True, slots=True)

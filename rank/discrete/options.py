@@ -15,15 +15,15 @@ import numpy as np
 
 from capmuster.enumerate.errors import CapmusterError
 from capmuster.rank.frontier import frontier
-from capmuster.rank.quantity import format_quantity
+from capmuster.rank.inputs.quantity import format_quantity
 
 if TYPE_CHECKING:
     from collections.abc import Iterable
 
     from numpy.typing import NDArray
 
-    from capmuster.rank.parts import CapacitorPart, SwitchPart
-    from capmuster.rank.parts_request import PartsRequest
+    from capmuster.rank.inputs.parts import CapacitorPart, SwitchPart
+    from capmuster.rank.inputs.parts_request import PartsRequest
 
     Floats: TypeAlias = NDArray[np.float64]
     Integers: TypeAlias = NDArray[np.int64]

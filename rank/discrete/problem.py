@@ -18,11 +18,11 @@ if TYPE_CHECKING:
 
     from numpy.typing import NDArray
 
-    from capmuster.rank.brief import Brief
     from capmuster.rank.discrete.blends import Blend
     from capmuster.rank.discrete.options import OptionBook, Options, Units
     from capmuster.rank.discrete.slots import Slot
-    from capmuster.rank.parts_request import Aim, PartsRequest
+    from capmuster.rank.inputs.brief import Brief
+    from capmuster.rank.inputs.parts_request import Aim, PartsRequest
 
 Selection: TypeAlias = tuple[tuple[int, ...], ...]
 """For each group, the option of each of its members: as many numbers as members, rising."""

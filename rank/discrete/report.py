@@ -7,20 +7,20 @@ from typing import TYPE_CHECKING, TypeAlias
 
 from capmuster.enumerate.families import family_names
 from capmuster.rank._version import __version__
-from capmuster.rank.columns import Column
 from capmuster.rank.discrete.design import LossTerms
 from capmuster.rank.discrete.problem import operating_input
-from capmuster.rank.parts import CapacitorPart
-from capmuster.rank.quantity import format_quantity
-from capmuster.rank.technology import fingerprint
+from capmuster.rank.files.columns import Column
+from capmuster.rank.inputs.parts import CapacitorPart
+from capmuster.rank.inputs.quantity import format_quantity
+from capmuster.rank.inputs.technology import fingerprint
 
 if TYPE_CHECKING:
     import pandas as pd
 
     from capmuster.rank.discrete.design import Filling
     from capmuster.rank.discrete.finalists import Finalist, PartsShortlist
-    from capmuster.rank.parts_request import PartsRequest
-    from capmuster.rank.quantity import Unit
+    from capmuster.rank.inputs.parts_request import PartsRequest
+    from capmuster.rank.inputs.quantity import Unit
 
 Row: TypeAlias = tuple[str | int | float | bool | None, ...]
 

@@ -7,13 +7,13 @@ from fractions import Fraction
 from typing import TYPE_CHECKING, Literal
 
 from capmuster.enumerate.converters import table_of
-from capmuster.rank.networktable import network_table
-from capmuster.rank.switching import switch_network
+from capmuster.rank.scores.networktable import network_table
+from capmuster.rank.scores.switching import switch_network
 from capmuster.rank.worstcase import ratings
 
 if TYPE_CHECKING:
     from capmuster.enumerate.wiring import Converter
-    from capmuster.rank.brief import Brief
+    from capmuster.rank.inputs.brief import Brief
 
 
 @dataclass(frozen=True, slots=True)
@@ -25,7 +25,7 @@ class Slot:
     kind
         "capacitor" or "switch".
     name
-        As in `capmuster.rank.switching` and in the wiring's order: C1, ..., S1, ....
+        As in `capmuster.rank.scores.switching` and in the wiring's order: C1, ..., S1, ....
     nodes
         Names of its two nodes; of a switch the positive one first while it blocks.
     phase

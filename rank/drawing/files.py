@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 from capmuster.enumerate.errors import CapmusterError
 from capmuster.rank.drawing.printed import printed
 from capmuster.rank.drawing.svg import svg
-from capmuster.rank.export import check_writable, write_all
+from capmuster.rank.files.export import check_writable, write_all
 
 if TYPE_CHECKING:
     from collections.abc import Sequence

@@ -20,14 +20,14 @@ from capmuster.rank.drawing.symbols import (
     wire_down,
 )
 from capmuster.rank.drawing.wireplan import DOWN, UP, Link, Plan, Stub, plan
-from capmuster.rank.switching import switch_network
+from capmuster.rank.scores.switching import switch_network
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
 
     from capmuster.enumerate.wiring import Converter
     from capmuster.rank.drawing.shapes import Mark, Symbol
-    from capmuster.rank.switching import SwitchNetwork
+    from capmuster.rank.scores.switching import SwitchNetwork
 
 _SIDE = 19.0  # left of a column, for a blade or a plus sign
 _TEXT_AT = PLATE + 5.0

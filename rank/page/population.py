@@ -9,17 +9,17 @@ import numpy as np
 
 from capmuster.enumerate.converters import ratios_of_triple, table_of
 from capmuster.enumerate.families import members
-from capmuster.rank.candidates import census_candidates
 from capmuster.rank.page.data import BINS, Population
-from capmuster.rank.scoredcensus import scored_census
-from capmuster.rank.switchtable import score
+from capmuster.rank.scores.candidates import census_candidates
+from capmuster.rank.scores.scoredcensus import scored_census
+from capmuster.rank.scores.switchtable import score
 
 if TYPE_CHECKING:
     from collections.abc import Iterator
 
     from numpy.typing import NDArray
 
-    from capmuster.rank.brief import Brief
+    from capmuster.rank.inputs.brief import Brief
 
     _Shares = NDArray[np.float64]
 

@@ -6,16 +6,16 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from capmuster.rank.circuit import circuit_of
+from capmuster.rank.design.losses import TERM_FIELDS, TERMS
 from capmuster.rank.drawing.sheet import potential_diagram
-from capmuster.rank.impedance import output_impedance
-from capmuster.rank.losses import TERM_FIELDS, TERMS
+from capmuster.rank.exact.circuit import circuit_of
+from capmuster.rank.exact.impedance import output_impedance
+from capmuster.rank.files.summary import assumptions, verdict
+from capmuster.rank.inputs.quantity import format_quantity
 from capmuster.rank.page.data import Candidate, ImpedanceCurve, Listing, LossBar, PageData
 from capmuster.rank.page.population import population_of
 from capmuster.rank.page.render import render_page
 from capmuster.rank.page.tablecells import page_table
-from capmuster.rank.quantity import format_quantity
-from capmuster.rank.summary import assumptions, verdict
 
 if TYPE_CHECKING:
     from collections.abc import Sequence

@@ -14,7 +14,7 @@ if TYPE_CHECKING:
 
     import pandas as pd
 
-    from capmuster.rank.columns import Column
+    from capmuster.rank.files.columns import Column
 
 _SYMBOLS = {"mm2": "mm²", "S/mm2": "S/mm²", "W/mm2": "W/mm²", "ohm": "Ω", "1": "%"}
 _PREFIXED = {"Hz", "W", "A", "ohm"}

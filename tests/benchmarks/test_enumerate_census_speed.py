@@ -24,8 +24,8 @@ from capmuster.enumerate.skeletoncount import labelled_skeletons
 from capmuster.enumerate.skeletons import skeletons
 from capmuster.enumerate.tally import Tally
 from capmuster.enumerate.threads import one_thread
-from capmuster.rank.candidates import census_candidates, census_ratios
-from capmuster.rank.cellscores import score_cells
+from capmuster.rank.scores.candidates import census_candidates, census_ratios
+from capmuster.rank.scores.cellscores import score_cells
 
 pytestmark = pytest.mark.benchmark
 

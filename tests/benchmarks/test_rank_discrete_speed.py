@@ -7,8 +7,8 @@ import time
 
 import pytest
 
-from capmuster.rank.brief import load_brief
 from capmuster.rank.discrete.choose import choose_parts
+from capmuster.rank.inputs.brief import load_brief
 
 pytestmark = pytest.mark.benchmark
 

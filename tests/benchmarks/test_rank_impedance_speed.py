@@ -9,11 +9,11 @@ import numpy as np
 import pytest
 
 from capmuster.enumerate.families import series_parallel
-from capmuster.rank.circuit import circuit_of
-from capmuster.rank.deck import bench_for, write_deck
-from capmuster.rank.impedance import corner_frequency, output_impedance
-from capmuster.rank.simulate import simulate
-from capmuster.rank.steadystate import SteadyState
+from capmuster.rank.exact.circuit import circuit_of
+from capmuster.rank.exact.deck import bench_for, write_deck
+from capmuster.rank.exact.impedance import corner_frequency, output_impedance
+from capmuster.rank.exact.simulate import simulate
+from capmuster.rank.exact.steadystate import SteadyState
 
 pytestmark = pytest.mark.benchmark
 CONVERTER = series_parallel(4)

@@ -1,0 +1,1 @@
+"""Exact circuits: steady states, impedance, start-up, decks, and finalists re-sized on them."""

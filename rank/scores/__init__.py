@@ -1,0 +1,1 @@
+"""What the wiring alone says of a converter: charge flow, switches, utilisations, listings of all of them."""
