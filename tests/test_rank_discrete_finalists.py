@@ -133,11 +133,15 @@ def test_a_general_integer_solver_finds_no_better_parts():
 @pytest.mark.parametrize(
     ("brief", "changes"),
     [
-        (SHELF, {}),
-        (SHELF, {"least": "price", "footprint": None, "efficiency": 0.97, "series": 2}),
-        (HELD, {"frequencies": (60e3, 120e3)}),
+        pytest.param(SHELF, {}, id="loss"),
+        pytest.param(
+            SHELF,
+            {"least": "price", "footprint": None, "efficiency": 0.97, "series": 2},
+            id="price",
+            marks=pytest.mark.long,
+        ),
+        pytest.param(HELD, {"frequencies": (60e3, 120e3)}, id="regulated", marks=pytest.mark.long),
     ],
-    ids=["loss", "price", "regulated"],
 )
 def test_bounds_of_a_pool_are_those_of_its_candidates_one_by_one(brief, changes):
     request = resolved(replace(SHELF.parts, **changes), brief)
@@ -272,6 +276,7 @@ def call(capsys, *arguments):
     return left.value.code, written.out, written.err
 
 
+@pytest.mark.long
 def test_the_command_gives_the_same_bytes_each_time(quarters):
     arguments = ("parts", quarters, "--top", "2", "--format", "json")
     first, second = run(*arguments), run(*arguments)
