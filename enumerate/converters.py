@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 from fractions import Fraction
 from functools import lru_cache
-from math import gcd
+from math import lcm
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -13,6 +13,7 @@ import numpy as np
 from capmuster.enumerate.attachments import EXCHANGES
 from capmuster.enumerate.canonicalbatch import canonical_batch
 from capmuster.enumerate.census import addresses, cells_at, census, check_reach
+from capmuster.enumerate.errors import CapmusterError
 from capmuster.enumerate.identity import MOST_READABLE, converter_id, id_of_number, wiring_number
 from capmuster.enumerate.tally import triple_of
 from capmuster.enumerate.wiring import Converter, format_words
@@ -237,16 +238,21 @@ def in_roles(cells: CellTable, roles: NDArray[np.int8]) -> ConverterTable:
 
 
 def table_of(members: Sequence[Converter]) -> ConverterTable:
-    """Put converters of one size into a table, in their order."""
+    """Put converters of one size into a table, in their order.
+
+    Raises
+    ------
+    CapmusterError
+        When charges and potentials of one are too large for sums of their products to be exact in 64 bits.
+    """
     n = members[0].n
     rows = len(members)
     potentials = np.zeros((rows, 2, n + 2), dtype=np.int64)
     scale = np.ones(rows, dtype=np.int64)
     for row, member in enumerate(members):
         both = member.balance.potentials
-        divisor = 1
-        for value in (*both[0], *both[1]):
-            divisor = divisor * value.denominator // gcd(divisor, value.denominator)
+        divisor = lcm(*(value.denominator for value in (*both[0], *both[1])))
+        _refuse_overflow(member, divisor)
         scale[row] = divisor
         for phase in (0, 1):
             potentials[row, phase, : len(both[phase])] = [int(value * divisor) for value in both[phase]]
@@ -260,3 +266,14 @@ def table_of(members: Sequence[Converter]) -> ConverterTable:
             [[member.internal_nodes(1), member.internal_nodes(2)] for member in members], dtype=np.int8
         ),
     )
+
+
+def _refuse_overflow(member: Converter, scale: int) -> None:
+    """Bound the largest sum that is formed: charge x blocking voltage over at most 3 n + 1 switches."""
+    charge = sum(map(abs, member.balance.charges))
+    highest = max(abs(value) for phase in member.balance.potentials for value in phase) * scale
+    if (3 * member.n + 1) * charge * 2 * highest >= 1 << 63:
+        raise CapmusterError(
+            f"converter {member.id}: its charges and potentials are too large to rank",
+            accepted="converters whose charges and potentials have fewer digits",
+        )

@@ -7,7 +7,7 @@ from math import gcd
 
 import pytest
 
-from capmuster.enumerate.converters import converters
+from capmuster.enumerate.converters import converters, table_of
 from capmuster.enumerate.errors import CapmusterError
 from capmuster.enumerate.families import (
     FAMILY_NAMES,
@@ -188,3 +188,10 @@ def test_bad_sizes(build, message):
 
 def test_names_are_found_in_any_case():
     assert [check_family(f" {name.upper()} ") for name in FAMILY_NAMES] == list(FAMILY_NAMES)
+
+
+def test_a_converter_too_large_for_exact_tables_is_refused_and_never_miscounted():
+    table = table_of([doubler_chain(12)])
+    assert Fraction(int(table.voltages[0].max()), int(table.scale[0])) == 2**11
+    with pytest.raises(CapmusterError, match="too large to rank"):
+        table_of([doubler_chain(40)])
