@@ -87,7 +87,7 @@ class Sizing:
     duty : (N,) float array
         Share of phase 1 [1].
     current : (N,) float array
-        Load current [A].
+        Load current that the sizing has chosen [A]; 1 where the task gives the load.
     impedance : Impedance
         Output impedance and its parts; where the output is held by frequency, at the mean frequency.
     losses : Losses
