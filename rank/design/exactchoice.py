@@ -16,7 +16,6 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from capmuster.rank.design.blend import Blend
 from capmuster.rank.design.choices import (
     MOST_CHOICES,
     Choice,
@@ -28,6 +27,7 @@ from capmuster.rank.design.choices import (
     with_switches,
 )
 from capmuster.rank.design.devicechoice import choose_and_size
+from capmuster.rank.design.mixtures import Blend
 from capmuster.rank.design.objectives import Sized, priced_model, size_candidates, total_cost
 from capmuster.rank.design.optioncosts import option_costs, option_set
 from capmuster.rank.design.profile import loss_points

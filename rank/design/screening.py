@@ -15,7 +15,6 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from capmuster.enumerate.converters import table_of
-from capmuster.rank.design.blend import Blend
 from capmuster.rank.design.classprices import at_prices
 from capmuster.rank.design.gatedrive import rail_driven
 from capmuster.rank.design.losses import (
@@ -25,6 +24,7 @@ from capmuster.rank.design.losses import (
     series_counts,
     switch_coefficients,
 )
+from capmuster.rank.design.mixtures import Blend
 from capmuster.rank.design.objectives import better_mix, priced_model, relaxed_bound, size_at_mix, total_cost
 from capmuster.rank.design.optioncosts import pair_table
 from capmuster.rank.design.profile import loss_points
