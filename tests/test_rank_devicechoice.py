@@ -198,7 +198,10 @@ def test_a_tree_that_is_no_chain_is_still_the_same_converter():
     assert trees != chain
 
 
-@pytest.mark.parametrize(("name", "top"), [("greenhouse-node-losses", 4), ("pump-shelf-losses", 4)])
+@pytest.mark.parametrize(
+    ("name", "top"),
+    [("greenhouse-node-losses", 4), pytest.param("pump-shelf-losses", 4, marks=pytest.mark.long)],
+)
 def test_the_order_of_shipped_briefs_is_proven(name, top):
     found = shortlist(load_brief(name), top=top)
     assert found.certificate.holds

@@ -66,7 +66,11 @@ def alone(brief, request, converter):
     "changes",
     [
         pytest.param({"footprint": 420.0}, id="loss"),
-        pytest.param({"least": "footprint", "footprint": None, "efficiency": 0.98}, id="footprint"),
+        pytest.param(
+            {"least": "footprint", "footprint": None, "efficiency": 0.98},
+            id="footprint",
+            marks=pytest.mark.long,
+        ),
         pytest.param(
             {"footprint": 420.0, "price": 11.0, "frequencies": (80e3, 160e3)},
             id="two budgets and frequencies",

@@ -114,11 +114,18 @@ def test_badges_say_the_phase_of_each_switch(converter):
         assert below[0].badge == ("solid" if switch.phase == 1 else "outline")
 
 
-def test_no_two_labels_or_symbols_overlap():
+@pytest.mark.parametrize(
+    "sizes",
+    [
+        pytest.param((2, 3, 3, 4, 4), id="few"),
+        pytest.param((2, 3, 3, 4, 4, 4, 4, 4, 4, 4), id="more", marks=pytest.mark.long),
+    ],
+)
+def test_no_two_labels_or_symbols_overlap(sizes):
     for member in members(3):
         assert not schematic(member.converter).collisions(), member
     random = Random(2)  # noqa: S311 -- a sample, the same on every run
-    for n in (2, 3, 3, 4, 4, 4, 4, 4, 4, 4):
+    for n in sizes:
         table = converters(n)
         converter = table.converter(random.randrange(len(table)))
         assert not schematic(converter).collisions(), converter.code
