@@ -22,6 +22,7 @@ _PREFIXES = {-12: "p", -9: "n", -6: "µ", -3: "m", 0: "", 3: "k", 6: "M", 9: "G"
 _LEAST_SHARE = 0.05  # [%] that one decimal shows
 _PLAIN = (1e-4, 1e6)
 _SHARES = {"capacitor_utilisation", "switch_utilisation", "output_evenness"}
+_OUT_OF_SCALE = {"inrush_A"}  # thousands of times the load: it must not set the prefix of all currents
 _NAMES = {"id", "ratio"}
 _TEXTS = {"families", "wiring", "overstressed"}
 _FLAGS = {"pareto", "exact_fits"}
@@ -109,7 +110,7 @@ def _kind(name: str) -> Literal["text", "name", "number", "share", "flag"]:
 
 def _common_power(unit: str, columns: Sequence[Column], frame: pd.DataFrame) -> int:
     """Power of ten, a multiple of three, under which the largest value of a unit has one to three figures."""
-    names = [column.name for column in columns if column.unit == unit]
+    names = [c.name for c in columns if c.unit == unit and c.name not in _OUT_OF_SCALE]
     largest = max((abs(float(v)) for name in names for v in frame[name] if math.isfinite(v)), default=0.0)
     if largest == 0.0:
         return 0
