@@ -17,6 +17,7 @@ from capmuster.rank.frontier import frontier
 from capmuster.rank.scores.candidates import census_ratios
 from capmuster.rank.scores.screened import Source, screened
 from capmuster.rank.scores.switchtable import score
+from capmuster.rank.scores.utilisation import refuse_degenerate
 from capmuster.rank.structs import joined, rows_of
 
 if TYPE_CHECKING:
@@ -131,7 +132,14 @@ def gather(brief: Brief, include: Sequence[Converter] = ()) -> Pool:
     include
         Converters that are candidates whether or not the search would find them; they may have idle or
         equipotential switches.
+
+    Raises
+    ------
+    IllPosedError
+        When an included converter is degenerate.
     """
+    for converter in include:
+        refuse_degenerate(converter)
     reach = min(brief.most_capacitors, CENSUS_REACH)
     left_out: Counter[str] = Counter()
     refused: dict[str, str] = {}

@@ -229,3 +229,12 @@ def test_any_arguments_end_in_an_answer_or_in_one_line(arguments):
         assert out == ""
         assert err.startswith("capmuster: ")
         assert err.count("\n") == 1
+
+
+@pytest.mark.parametrize("command", [["rank", "greenhouse-node"], ["parts", "pump-shelf"]])
+def test_a_degenerate_wiring_is_not_ranked(command):
+    done = run(*command, "--include", "O-a/I-O a-G/O-G")
+    assert done.returncode == 2
+    assert done.stdout == ""
+    assert done.stderr.count("\n") == 1
+    assert "C1 would hold no voltage" in done.stderr

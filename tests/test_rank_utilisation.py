@@ -200,7 +200,7 @@ def test_degenerate_is_refused():
     with pytest.raises(IllPosedError) as error:
         charge_flow(Converter.parse("I-O/O-I"))
     assert str(error.value) == (
-        "wiring: C1 would hold no voltage (degenerate); accepted: capacitors that hold a voltage"
+        "wiring 'I-O/O-I': C1 would hold no voltage (degenerate); accepted: capacitors that hold a voltage"
     )
 
 

@@ -73,14 +73,10 @@ def charge_flow(converter: Converter) -> ChargeFlow:
     IllPosedError
         When the converter is degenerate: some capacitor would hold no voltage.
     """
+    refuse_degenerate(converter)
     balance = converter.balance
     output = abs(balance.port_charges[2])
     network = switch_network(converter)
-    if balance.degenerate:
-        empty = ", ".join(f"C{i + 1}" for i, v in enumerate(balance.voltages) if not v)
-        raise IllPosedError(
-            f"wiring: {empty} would hold no voltage (degenerate)", accepted="capacitors that hold a voltage"
-        )
     multipliers = tuple(Fraction(abs(q), output) for q in balance.charges)
     capacitor_sum = sum(
         (a * v for a, v in zip(multipliers, balance.voltages, strict=True)), start=Fraction(0)
@@ -99,6 +95,23 @@ def charge_flow(converter: Converter) -> ChargeFlow:
         slow_limit_metric=2 * (magnitude / capacitor_sum) ** 2,
         fast_limit_metric=(magnitude / switch_sum) ** 2 / 2 if switch_sum else None,
     )
+
+
+def refuse_degenerate(converter: Converter) -> None:
+    """Refuse a converter with a capacitor that would hold no voltage.
+
+    Raises
+    ------
+    IllPosedError
+        When the converter is degenerate; the message names the capacitors and the wiring.
+    """
+    balance = converter.balance
+    if balance.degenerate:
+        empty = ", ".join(f"C{i + 1}" for i, v in enumerate(balance.voltages) if not v)
+        raise IllPosedError(
+            f"wiring '{converter.code}': {empty} would hold no voltage (degenerate)",
+            accepted="capacitors that hold a voltage",
+        )
 
 
 def lifted_energy(ratio: Fraction) -> Fraction:
