@@ -6,6 +6,8 @@ from typing import TYPE_CHECKING
 
 import click
 
+from capmuster.rank.commands.options import format_option
+
 if TYPE_CHECKING:
     from capmuster.rank.scores.counting import CensusCount
 
@@ -15,14 +17,7 @@ if TYPE_CHECKING:
 @click.option(
     "--jobs", type=int, default=-1, metavar="J", help="Processes for six capacitors; all cores unless said."
 )
-@click.option(
-    "--format",
-    "form",
-    type=click.Choice(["table", "csv", "json"]),
-    default="table",
-    show_default=True,
-    help="How rows are written.",
-)
+@format_option
 def command(capacitors: int, jobs: int, form: str) -> None:
     """Count every cell of exactly N flying capacitors, twice.
 

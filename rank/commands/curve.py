@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING
 import click
 
 from capmuster.rank.commands.circuitoptions import circuit_options, read_values
+from capmuster.rank.commands.options import format_option
 
 if TYPE_CHECKING:
     from capmuster.rank.exact.curve import Curve, Sweep
@@ -35,14 +36,7 @@ _SHOWN = 13
     metavar="FILE",
     help="Also write a file: .csv, .svg or .png. May be given several times.",
 )
-@click.option(
-    "--format",
-    "form",
-    type=click.Choice(["table", "csv", "json"]),
-    default="table",
-    show_default=True,
-    help="How rows are written.",
-)
+@format_option
 def command(
     *,
     subject: str,

@@ -6,6 +6,8 @@ from typing import TYPE_CHECKING
 
 import click
 
+from capmuster.rank.commands.options import format_option
+
 if TYPE_CHECKING:
     from capmuster.rank.scores.listed import Listed
     from capmuster.rank.scores.listing import Listing
@@ -61,14 +63,7 @@ _SHOWN = 25
     metavar="K",
     help=f"Show the best K only. Without it a table shows {_SHOWN}; CSV and JSON hold everything.",
 )
-@click.option(
-    "--format",
-    "form",
-    type=click.Choice(["table", "csv", "json"]),
-    default="table",
-    show_default=True,
-    help="How rows are written.",
-)
+@format_option
 def command(
     *,
     ratio: str,

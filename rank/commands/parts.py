@@ -6,6 +6,8 @@ from typing import TYPE_CHECKING
 
 import click
 
+from capmuster.rank.commands.options import format_option
+
 if TYPE_CHECKING:
     from capmuster.rank.discrete.finalists import PartsShortlist
     from capmuster.rank.inputs.brief import Brief
@@ -46,14 +48,7 @@ _TEXTUAL = {"id", "ratio", "families", "proven"}
     metavar="FILE",
     help="Write files instead: .csv (a row per element), .json or .xlsx; repeat.",
 )
-@click.option(
-    "--format",
-    "form",
-    type=click.Choice(["table", "csv", "json"]),
-    default="table",
-    show_default=True,
-    help="How rows are written.",
-)
+@format_option
 def command(
     brief: str,
     top: int,

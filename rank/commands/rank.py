@@ -7,6 +7,8 @@ from typing import TYPE_CHECKING
 
 import click
 
+from capmuster.rank.commands.options import format_option
+
 if TYPE_CHECKING:
     from collections.abc import Mapping, Sequence
 
@@ -109,14 +111,7 @@ _LOSS_LEGEND = (
     metavar="NAMES",
     help="Show these columns, in this order: names as in CSV, separated by commas.",
 )
-@click.option(
-    "--format",
-    "form",
-    type=click.Choice(["table", "csv", "json"]),
-    default="table",
-    show_default=True,
-    help="How rows are written.",
-)
+@format_option
 def command(*, brief: str, top: int, include: tuple[str, ...], columns: str | None, form: str) -> None:
     """Rank every converter that can do the job of BRIEF.
 

@@ -6,20 +6,15 @@ from typing import TYPE_CHECKING
 
 import click
 
+from capmuster.rank.commands.options import format_option
+
 if TYPE_CHECKING:
     from capmuster.rank.scores.detail import Detail
 
 
 @click.command(name="show", epilog="\b\nExamples:\n  capmuster show 'I-G/a-I I-G/O-a'\n  capmuster show 1-0h")
 @click.argument("converter", metavar="WIRING_OR_ID")
-@click.option(
-    "--format",
-    "form",
-    type=click.Choice(["table", "csv", "json"]),
-    default="table",
-    show_default=True,
-    help="How rows are written.",
-)
+@format_option
 def command(converter: str, form: str) -> None:
     """Show charges, voltages and switches of one converter, exactly.
 

@@ -6,6 +6,8 @@ from typing import TYPE_CHECKING
 
 import click
 
+from capmuster.rank.commands.options import format_option
+
 if TYPE_CHECKING:
     from collections.abc import Sequence
     from fractions import Fraction
@@ -40,14 +42,7 @@ if TYPE_CHECKING:
 )
 @click.option("--jobs", type=int, metavar="J", help="Processes; all cores for six capacitors, else one.")
 @click.option("--scheduler", metavar="ADDRESS", help="Run on the Dask cluster of this scheduler.")
-@click.option(
-    "--format",
-    "form",
-    type=click.Choice(["table", "csv", "json"]),
-    default="table",
-    show_default=True,
-    help="How rows are written.",
-)
+@format_option
 def command(
     *,
     capacitors: int,

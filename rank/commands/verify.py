@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING
 import click
 
 from capmuster.rank.commands.circuitoptions import circuit_options, read_values
+from capmuster.rank.commands.options import format_option
 
 if TYPE_CHECKING:
     from capmuster.rank.exact.subject import Subject
@@ -25,14 +26,7 @@ _HEADER = ["id", "quantity", "exact", "simulated", "difference"]
 @click.option(
     "--top", type=int, default=3, show_default=True, metavar="K", help="How many finalists of a brief."
 )
-@click.option(
-    "--format",
-    "form",
-    type=click.Choice(["table", "csv", "json"]),
-    default="table",
-    show_default=True,
-    help="How rows are written.",
-)
+@format_option
 def command(*, subject: str, top: int, form: str, **options: str | None) -> None:
     """Hold the exact results against ngspice.
 
